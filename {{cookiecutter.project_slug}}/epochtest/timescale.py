@@ -13,7 +13,7 @@ Days since J2000.0 (JD 2451545.0) in float64 resolve 0.1 microseconds within a c
 
 from __future__ import annotations
 
-from datetime import date, datetime, timezone
+from datetime import UTC, date, datetime
 from functools import cache
 
 import numpy as np
@@ -127,11 +127,11 @@ def utc_instant(value: date | datetime | str | np.datetime64) -> np.datetime64:
     Raises ValueError for text that is no ISO 8601 date or time.
     """
     if isinstance(value, np.datetime64):
-        return value.astype("datetime64[us]")
+        return np.datetime64(value, "us")
     if isinstance(value, str):
         value = datetime.fromisoformat(value)
     if isinstance(value, datetime):
         if value.tzinfo is not None:
-            value = value.astimezone(timezone.utc).replace(tzinfo=None)
+            value = value.astimezone(UTC).replace(tzinfo=None)
         return np.datetime64(value, "us")
     return np.datetime64(value.isoformat(), "us")

@@ -46,7 +46,8 @@ def _models_in(annotation: Any) -> list[type[BaseModel]]:
 
 def _sentence(model: type[BaseModel], fault: Any) -> str:
     location = tuple(fault["loc"])
-    key = ".".join(str(step) for step in location)
+    tags = {_tag(m) for m in _models_at(model, location[:-1]) if m.model_fields.get("kind")}
+    key = ".".join(str(step) for step in location if step not in tags)
     if fault["type"] == "extra_forbidden":
         parents = _models_at(model, location[:-1])
         tagged = [m for m in parents if m.model_fields.get("kind") and _tag(m) in location]
@@ -62,7 +63,8 @@ def _sentence(model: type[BaseModel], fault: Any) -> str:
     if fault["type"] in ("literal_error", "union_tag_invalid") and isinstance(value, str | dict):
         word = value if isinstance(value, str) else str(value.get("kind"))
         expected = fault["ctx"].get("expected") or fault["ctx"].get("expected_tags") or ""
-        guess = nearest(word, [part.strip(" '") for part in expected.replace(" or ", ",").split(",")])
+        words = [part.strip(" '") for part in expected.replace(" or ", ",").split(",")]
+        guess = nearest(word, words)
         hint = f" Did you mean {guess!r}?" if guess else ""
         return f"{key}: {word!r} is not one of {expected}.{hint}"
     if fault["type"] == "value_error" and not isinstance(value, str | int | float):

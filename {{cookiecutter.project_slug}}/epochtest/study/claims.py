@@ -148,7 +148,7 @@ class TimingClaim(Strict):
     def _consistent(self) -> TimingClaim:
         first, last = self.window_days
         if not first < last:
-            raise ValueError(f"window_days is [first, last] with first < last; found {first}, {last}")
+            raise ValueError(f"window_days is [first, last], first < last; found {first}, {last}")
         if max(abs(first), abs(last)) > 3660.0:
             raise ValueError("window_days reaches more than ten years from the epoch; shorten it")
         ratio = self.asserted_rate_ratio

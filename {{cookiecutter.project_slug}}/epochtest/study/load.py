@@ -81,7 +81,7 @@ def load_study(root: Path | None = None) -> LoadedStudy:
         if claim is None:
             continue
         if claim.id != path.stem:
-            faults.append(f"{name}: id {claim.id!r} differs from the file name; rename one of them.")
+            faults.append(f"{name}: id {claim.id!r} is not the file's name; rename one of them.")
         claims.append(claim)
     if not list((folder / "claims").glob("*.toml")):
         faults.append("claims/: holds no claim; write one, claims/example.toml.txt shows how.")

@@ -5,11 +5,13 @@ from __future__ import annotations
 import json
 from pathlib import Path
 
+from pydantic import BaseModel
+
 from epochtest.study.claims import TimingClaim
 from epochtest.study.results import ClaimResult
 from epochtest.study.settings import Sources, Study
 
-SCHEMAS = {
+SCHEMAS: dict[str, type[BaseModel]] = {
     "study.schema.json": Study,
     "claim.schema.json": TimingClaim,
     "sources.schema.json": Sources,

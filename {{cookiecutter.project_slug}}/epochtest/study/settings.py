@@ -44,7 +44,7 @@ class Span(Strict):
     def _ordered(self) -> Span:
         if not utc_instant(self.start) < utc_instant(self.end):
             raise ValueError(
-                f"the span ends ({self.end}) before it starts ({self.start}); swap or mend the dates"
+                f"the span ends ({self.end}) before it starts ({self.start}); mend the dates"
             )
         return self
 
@@ -158,6 +158,8 @@ class Selection(Strict):
 
 
 class EphemerisSettings(Strict):
+    """Which packaged kernel the positions come from."""
+
     kernel: Kernel = Field("DE421", description="DE421: 1899-2053; DE440: 1549-2650.")
 
 

@@ -127,7 +127,8 @@ def utc_instant(value: date | datetime | str | np.datetime64) -> np.datetime64:
     Raises ValueError for text that is no ISO 8601 date or time.
     """
     if isinstance(value, np.datetime64):
-        return np.datetime64(value, "us")
+        instant: np.datetime64 = value.astype("datetime64[us]")
+        return instant
     if isinstance(value, str):
         value = datetime.fromisoformat(value)
     if isinstance(value, datetime):

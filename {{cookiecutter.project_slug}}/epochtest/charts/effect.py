@@ -1,0 +1,237 @@
+"""The summary picture: how strong an effect each claim's data show, and could have shown.
+
+One claim takes one strip::
+
+    title of the claim                         finding, ratio (inflated interval)
+        |----------=====O=====----------|   <|     <>
+        thin: inflated  thick: exact   detectable  asserted
+"""
+
+from __future__ import annotations
+
+import itertools
+import textwrap
+from collections.abc import Iterable, Sequence
+from typing import Any, NamedTuple
+
+import altair as alt
+import numpy as np
+
+from epochtest.charts import style
+from epochtest.charts.figure import Figure
+from epochtest.study.results import CAUTION, ClaimResult, FindingWord
+from epochtest.tables import numbers
+
+Bounds = tuple[float, float | None]
+
+MOST_CLAIMS = 60
+_STRIP_PX, _LINE_PX, _MARKS_PX = 68, 18, 24
+_TITLE_CHARACTERS = 46
+_TICKS = (0.01, 0.02, 0.05, 0.1, 0.2, 0.5, 1, 2, 5, 10, 20, 50, 100)
+_NEAR_TICKS = (0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 1, 1.1, 1.25, 1.5, 2, 3, 4, 6, 10)
+_AROUND_ONE = (0.8, 1.25)
+_INTERVALS_REACH = 2.0
+
+
+class EffectRow(NamedTuple):
+    """One claim's strip; None where there is no such number (upper end None: unbounded)."""
+
+    title: str
+    ratio: float | None
+    exact: Bounds
+    inflated: Bounds
+    detectable: float | None
+    asserted: float | None
+    finding: FindingWord
+
+
+def effect_rows(results: Iterable[ClaimResult]) -> list[EffectRow]:
+    """The strips of decided claims, in the order given."""
+    return [
+        EffectRow(
+            title=result.test.claim.title,
+            ratio=result.test.effect.rate_ratio,
+            exact=result.test.effect.exact_interval,
+            inflated=result.test.effect.inflated_interval,
+            detectable=result.test.effect.detectable_ratio,
+            asserted=result.test.claim.asserted_rate_ratio,
+            finding=result.finding,
+        )
+        for result in results
+    ]
+
+
+def effect_chart(
+    rows: Sequence[EffectRow], *, confidence: float = 0.95, power: float = 0.8
+) -> Figure:
+    """Rate ratios of all claims on one log axis; one strip per claim.
+
+    Raises ValueError for more than 60 claims, which no single picture can show.
+    """
+    title = "Rate of earthquakes inside the windows over outside"
+    if not rows:
+        return Figure.saying("No claims.", kind="effect", title=title)
+    if len(rows) > MOST_CLAIMS:
+        raise ValueError(f"{len(rows)} claims do not fit one chart; draw {MOST_CLAIMS} at a time")
+    low, high = _domain(rows)
+    x = alt.X(
+        "ratio:Q",
+        scale=alt.Scale(type="log", domain=[low, high], nice=False),
+        axis=alt.Axis(
+            title="rate ratio, log scale (below 1 fewer, above 1 more)",
+            values=[t for t in (_NEAR_TICKS if high / low < 40 else _TICKS) if low <= t <= high],
+            format="~g",
+            gridOpacity=0.12,
+        ),
+    )
+    names = [
+        textwrap.wrap(row.title, _TITLE_CHARACTERS, max_lines=2, placeholder=" …") for row in rows
+    ]
+    heights = [_STRIP_PX + _LINE_PX * (len(name) - 1) for name in names]
+    bottom = sum(heights)
+    feet = list(itertools.accumulate(heights))
+    layers: list[Any] = []
+    y = alt.Y("y:Q", scale=alt.Scale(domain=[0, bottom], range=[0, bottom], nice=False), axis=None)
+    for row, name, foot, height in zip(rows, names, feet, heights, strict=True):
+        layers += _words(row, name, foot - height)
+        one = alt.Chart(style.one_row()).mark_rule(color=style.INK, strokeWidth=1.5)
+        marks_top, marks_foot = alt.value(foot - _MARKS_PX - 20), alt.value(foot)
+        layers.append(one.encode(x=alt.datum(1), y=marks_top, y2=marks_foot))
+        layers += _bars(row, foot - _MARKS_PX, x, y, (low, high))
+    layers += _marks(rows, [foot - _MARKS_PX for foot in feet], x, y, (low, high))
+    keys = [
+        style.Key("measured", "point", style.BLUE, size=90),
+        style.Key("exact", "line", style.BLUE, thickness=8, opacity=0.6),
+        style.Key("with clustering", "line", style.BLUE),
+        style.Key(
+            "detectable", "point", style.VERMILION, shape="triangle-up", filled=False, size=90
+        ),
+    ]
+    if any(row.asserted is not None for row in rows):
+        keys.append(
+            style.Key("asserted", "point", style.PURPLE, shape="diamond", filled=False, size=90)
+        )
+    drawn = style.key_layers(keys, 4)
+    chart = alt.layer(*layers, *drawn).properties(
+        width=640,
+        height=bottom,
+        padding={"top": style.EDGE_PX, "left": 16, "right": 20, "bottom": style.EDGE_PX},
+    )
+    caption = (
+        f"One strip per claim; the vertical rule at 1 means no difference. The thick bar is the "
+        f"{numbers.percent(confidence, 0)} interval if earthquakes were independent, "
+        f"the thin bar the wider one that allows for their clustering; arrows run on beyond "
+        f"the chart. The open triangle is the smallest ratio that this test would have found with {numbers.percent(power, 0)} "
+        f"power: what lies between 1 and the triangle could have been missed. {CAUTION}"
+    )
+    words = f"{title}, {numbers.counted(len(rows), 'claim', plain=True)}. " + " ".join(
+        _in_words(row) for row in rows
+    )
+    return Figure.of(style.themed(chart), kind="effect", title=title, caption=caption, alt=words)
+
+
+def _in_words(row: EffectRow) -> str:
+    text = (
+        f"{row.title}: {row.finding}, ratio {numbers.ratio(row.ratio)}, exact interval "
+        f"{numbers.interval(row.exact)}, with clustering {numbers.interval(row.inflated)}, "
+        f"detectable {numbers.ratio(row.detectable)}"
+    )
+    return text + (f", asserted {numbers.ratio(row.asserted)}." if row.asserted else ".")
+
+
+def _domain(rows: Sequence[EffectRow]) -> tuple[float, float]:
+    """Ends of the axis: all points; interval ends only as far as twice beyond the points."""
+    points = [
+        value
+        for row in rows
+        for value in (row.ratio, row.detectable, row.asserted)
+        if value is not None and 0.0 < value < np.inf
+    ]
+    least, most = min([*points, _AROUND_ONE[0]]), max([*points, _AROUND_ONE[1]])
+    ends = [
+        end
+        for row in rows
+        for bounds in (row.exact, row.inflated)
+        for end in bounds
+        if end is not None and np.isfinite(end)
+    ]
+    low = min([least, *(max(end, least / _INTERVALS_REACH) for end in ends)])
+    high = max([most, *(min(end, most * _INTERVALS_REACH) for end in ends)])
+    margin = (high / low) ** 0.05
+    return low / margin, high * margin
+
+
+def _words(row: EffectRow, name: list[str], top: float) -> list[Any]:
+    """Title, finding and numbers of one claim, and the line that parts it from the one above."""
+    found = f"{row.finding}: {numbers.ratio(row.ratio)} ({numbers.interval(row.inflated)})"
+    layers = [style.text_at(alt.value(640), alt.value(top + 15), found, align="right")]
+    for number, line in enumerate(name):
+        y = alt.value(top + 15 + _LINE_PX * number)
+        layers.append(style.text_at(alt.value(0), y, line, bold=True))
+    if top:
+        parting = alt.Chart(style.one_row()).mark_rule(color=style.INK, opacity=0.2)
+        layers.append(parting.encode(x=alt.value(0), x2=alt.value(640), y=alt.value(top)))
+    return layers
+
+
+def _bars(row: EffectRow, middle: float, x: Any, y: Any, domain: tuple[float, float]) -> list[Any]:
+    """The two intervals of one claim; arrows where they run on beyond the axis."""
+    layers = []
+    for bounds, thick, opacity in ((row.exact, 10, 0.6), (row.inflated, 2, 1.0)):
+        first, last, below, beyond = _clipped(bounds, domain)
+        if first >= last:
+            continue
+        ends = style.frame(ratio=[first], other=[last], y=[middle])
+        layers.append(
+            alt.Chart(ends)
+            .mark_rule(color=style.BLUE, strokeWidth=thick, opacity=opacity)
+            .encode(x=x, x2="other", y=y)
+        )
+        if thick > 2:
+            continue
+        for at, cut, arrow in (
+            (first, below, "triangle-left"), (last, beyond, "triangle-right"),
+        ):  # fmt: skip
+            mark = alt.Chart(style.frame(ratio=[at], y=[middle])).mark_point(
+                shape=arrow if cut else "stroke",
+                filled=True,
+                angle=0 if cut else 90,
+                color=style.BLUE,
+                stroke=style.BLUE,
+                strokeWidth=2,
+                size=70,
+                opacity=1,
+            )
+            layers.append(mark.encode(x=x, y=y))
+    return layers
+
+
+def _clipped(bounds: Bounds, domain: tuple[float, float]) -> tuple[float, float, bool, bool]:
+    """An interval inside the axis, and whether it runs on below and beyond."""
+    low, high = bounds[0], np.inf if bounds[1] is None else bounds[1]
+    first, last = max(low, domain[0]), min(high, domain[1])
+    return first, last, low < domain[0], high > domain[1]
+
+
+def _marks(
+    rows: Sequence[EffectRow], middles: list[float], x: Any, y: Any, domain: tuple[float, float]
+) -> list[Any]:
+    """Points of all claims: asserted just above the bars, measured on, detectable just below."""
+    layers = []
+    for values, shift, look in (
+        ([row.asserted for row in rows], -12, {"shape": "diamond", "color": style.PURPLE}),
+        ([row.detectable for row in rows], 13, {"shape": "triangle-up", "color": style.VERMILION}),
+        ([row.ratio for row in rows], 0, {"shape": "circle", "color": style.BLUE, "filled": True}),
+    ):
+        shown = [
+            (value, middle + shift)
+            for value, middle in zip(values, middles, strict=True)
+            if value is not None and domain[0] <= value <= domain[1]
+        ]
+        if shown:
+            data = style.frame(ratio=[v for v, _ in shown], y=[m for _, m in shown])
+            mark = alt.Chart(data).mark_point(
+                **{"filled": False, "size": 80, "strokeWidth": 2.2, "opacity": 1, **look}
+            )
+            layers.append(mark.encode(x=x, y=y))
+    return layers

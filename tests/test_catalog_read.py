@@ -10,9 +10,6 @@ from pathlib import Path
 import numpy as np
 import pyarrow as pa
 import pytest
-from hypothesis import given, settings
-from hypothesis import strategies as st
-
 from epochtest.catalog.clean import Cleaned, clean
 from epochtest.catalog.read import read_catalog
 from epochtest.catalog.records import Dialect, fast_records, plain_records
@@ -20,6 +17,8 @@ from epochtest.catalog.schema import COLUMNS, empty_frame, read_parquet, write_p
 from epochtest.catalog.times import MIDNIGHT_24, SECOND_60, parse_times
 from epochtest.errors import CatalogError, MissingArtifactError
 from epochtest.study.settings import CatalogSettings
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 FILE = "catalogs/quakes.csv"
 USUAL = "time,latitude,longitude,depth,mag,magType,id,type\n"
@@ -44,7 +43,7 @@ def test_fdsn_event_text(tmp_path: Path) -> None:
     content = (
         "#EventID|Time|Latitude|Longitude|Depth/km|Author|Catalog|Contributor|ContributorID|"
         "MagType|Magnitude|MagAuthor|EventLocationName|EventType\n"
-        '7|2011-03-11T05:46:24.12|38.297|-142.373|29.0|A|B|C|D|mww|9.1|E|Off "the" coast|earthquake\n'
+        '7|2011-03-11T05:46:24.12|38.297|-142.373|29.0|A|B|C|D|mww|9.1|E|A "b" c|earthquake\n'
         "# a comment\n"
         "8|2011-03-11T06:00:00||1|||||||4.1|||\n"
     )
@@ -110,6 +109,11 @@ def test_a_quote_never_closed_swallows_no_row(tmp_path: Path) -> None:
     assert cleaned.quarantined[["line", "reason"]].to_numpy().tolist() == [
         [2, "wrong number of fields"]
     ]
+    twice = read(tmp_path, content + '2001-01-04,1,2,5,"open,d\n2001-01-05,1,2,5,z,e\n')
+    assert twice.kept["event_id"].tolist() == ["b", "c", "e"]
+    assert twice.quarantined["line"].tolist() == [2, 5]
+    in_turn = content.replace("x,b", '"open,b')
+    assert read(tmp_path, in_turn).quarantined["line"].tolist() == [2, 3]
 
 
 def test_ragged_rows_are_set_aside_with_their_line(tmp_path: Path) -> None:
@@ -129,7 +133,10 @@ CELLS = st.text(alphabet='ab ",\n;', max_size=4)
 @settings(max_examples=200, deadline=None, derandomize=True)
 @given(st.lists(st.tuples(CELLS, CELLS, CELLS), min_size=1, max_size=8))
 def test_fast_and_plain_reading_agree(rows: list[tuple[str, str, str]]) -> None:
-    """Arrow's reader and the line-by-line one give what Python's csv module wrote (RFC 4180)."""
+    """Arrow's reader and the line-by-line one give what Python's csv module wrote (RFC 4180).
+
+    With a line end inside quotes Arrow's is not used.
+    """
     stream = io.StringIO()
     csv.writer(stream, lineterminator="\n", quoting=csv.QUOTE_ALL).writerows(rows)
     body = stream.getvalue().encode()
@@ -139,7 +146,9 @@ def test_fast_and_plain_reading_agree(rows: list[tuple[str, str, str]]) -> None:
         [row[2] for row in rows],
     ]
     fast = fast_records(body, 2, 3, [0, 2], Dialect(","))
-    assert fast is not None
+    assert (fast is None) == any("\n" in cell for row in rows for cell in row)
+    if fast is None:
+        return
     assert fast.fields == plain.fields
     assert fast.line.tolist() == plain.line.tolist()
 
@@ -175,7 +184,7 @@ def test_times_that_are_refused(text: str) -> None:
     st.integers(-14 * 60, 14 * 60),
 )
 def test_times_agree_with_the_standard_library(moment: datetime, offset_minutes: int) -> None:
-    """All years, with offsets, as Python's datetime.fromisoformat reads them, to the microsecond."""
+    """All years, with offsets, as datetime.fromisoformat reads them, to the microsecond."""
     sign = "-" if offset_minutes < 0 else "+"
     hours, minutes = divmod(abs(offset_minutes), 60)
     text = f"{moment.isoformat()}{sign}{hours:02d}:{minutes:02d}"
@@ -233,7 +242,11 @@ def test_column_map(tmp_path: Path) -> None:
     }  # fmt: skip
     row = read(tmp_path, content, columns=columns).kept.iloc[0]
     assert (row["latitude_deg"], row["longitude_deg"], row["depth_km"]) == (38.0, 142.0, 29.0)
-    assert (row["magnitude"], row["event_type"], row["event_id"]) == (9.1, "earthquake", f"{FILE}:2")
+    assert (row["magnitude"], row["event_type"], row["event_id"]) == (
+        9.1,
+        "earthquake",
+        f"{FILE}:2",
+    )
 
 
 @pytest.mark.parametrize(

@@ -44,7 +44,7 @@ AWKWARD = {
     "backslashes": r"C:\new\table \u0041 \\",
     "markup": "<script>alert(1)</script> *a* _b_ [c](d) # | &amp; $x$",
     "yaml signs": "- key: value # not a comment",
-    "unprintable": "zero\u200bwidth\ufeffmark",
+    "unprintable": "zero\u200bwidth\ufeffmark and noncharacter\uffff",
     "two hundred characters": "Long name é " * 16 + "to the end",
 }
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import ast
 import importlib.util
 import re
 import subprocess
@@ -147,3 +148,20 @@ def test_demo_catalog_holds_what_its_scenario_says() -> None:
     times = pd.to_datetime(frame["time"], errors="coerce", utc=True)
     assert times.isna().sum() == 1
     assert times.dropna().between("1970-01-01", "2020-01-02", inclusive="left").all()
+
+
+def test_what_the_library_imports_is_declared() -> None:
+    """Each foreign package that the library imports is among the study's stated dependencies."""
+    run, _ = script("locks", "make_locks").study_dependencies()
+    declared = {re.sub("[-_.]+", "_", Requirement(each).name).lower() for each in run}
+    distributions = {"vl_convert": "vl_convert_python"}
+    imported = set()
+    for path in (TEMPLATE / "epochtest").rglob("*.py"):
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            if isinstance(node, ast.Import):
+                imported |= {each.name.partition(".")[0] for each in node.names}
+            elif isinstance(node, ast.ImportFrom) and node.module and not node.level:
+                imported.add(node.module.partition(".")[0])
+    foreign = imported - set(sys.stdlib_module_names) - {"epochtest"}
+    assert {"numpy", "papermill"} <= foreign
+    assert {distributions.get(name, name) for name in foreign} <= declared

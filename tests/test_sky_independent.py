@@ -19,14 +19,13 @@ import ephem
 import erfa
 import numpy as np
 import pytest
-from numpy.typing import NDArray
-from pymeeus import Earth, Jupiter, Mars, Mercury, Neptune, Saturn, Uranus, Venus
-from pymeeus.Epoch import Epoch
-
 from epochtest.sky.ephemeris import open_ephemeris
 from epochtest.sky.events import find_epochs
 from epochtest.study.claims import LongitudeDifference, MoonDistance, MoonPhase
 from epochtest.timescale import J2000_JD, tdb_minus_tt_s
+from numpy.typing import NDArray
+from pymeeus import Earth, Jupiter, Mars, Mercury, Neptune, Saturn, Uranus, Venus
+from pymeeus.Epoch import Epoch
 
 Vector = NDArray[np.float64]
 FIRST, LAST = np.datetime64("1901-01-01", "us"), np.datetime64("2050-01-01", "us")
@@ -188,7 +187,7 @@ def test_moon_seen_from_the_sun_and_the_earth_from_the_moon() -> None:
 
 
 def test_moon_phases_against_pyephem() -> None:
-    """All 1,867 apparent new and full Moons of 1950-2025... agree with PyEphem within its error.
+    """Forty apparent new and full Moons of 1950-2025 agree with PyEphem within 1".
 
     Moshier's theory, fit to DE404, is good to about 0.5" in longitude (its author), the Sun of
     VSOP87 to 0.1"; the relative rate is at least 10.9 deg a day. PyEphem turns its instants to
@@ -210,8 +209,13 @@ def test_moon_phases_against_pyephem() -> None:
 
 @pytest.mark.parametrize("target_deg", [0.0, 90.0, 180.0, 270.0, 33.0])
 def test_moon_elongations_against_astronomy_engine(target_deg: float) -> None:
-    """Apparent elongations of the Moon agree with astronomy-engine's own search: 10" over rate."""
-    event = MoonPhase(elongations_deg=(target_deg,), frame="apparent-of-date")
+    """Elongations of the Moon agree with astronomy-engine's own search: 12" over the rate.
+
+    Its search leaves the 20" of aberration out, so the geometric elongation is compared. 10" for
+    its series; 2" because its ecliptic is that of date, 19" away at most in this span, which
+    turns the longitude of the Moon by no more than 19" x tan 5.3 deg.
+    """
+    event = MoonPhase(elongations_deg=(target_deg,), frame="geometric-J2000")
     first, last = np.datetime64("1960-01-01", "us"), np.datetime64("2030-01-01", "us")
     table = find_epochs(event, open_ephemeris("DE421"), first, last)
     tt_days = table["tdb_days"] - tdb_minus_tt_s(table["tdb_days"]) / 86400.0
@@ -219,7 +223,7 @@ def test_moon_elongations_against_astronomy_engine(target_deg: float) -> None:
         start = astronomy.Time.FromTerrestrialTime(float(tt_days[row]) - 3.0)
         theirs = astronomy.SearchMoonPhase(target_deg, start, 6.0)
         assert theirs is not None
-        assert abs(theirs.tt - tt_days[row]) < 10.0 * ARCSECOND_DEG / 10.9
+        assert abs(theirs.tt - tt_days[row]) < 12.0 * ARCSECOND_DEG / 10.9
 
 
 @pytest.mark.parametrize("extreme", ["perigee", "apogee"])

@@ -91,10 +91,12 @@ def utc_from_tt_days(tt_days: ArrayLike) -> Instants:
     flat = np.atleast_1d(days).ravel()
     bad = np.isnan(flat)
     safe = np.where(bad, 0.0, flat)
-    label = safe.copy()
+    label = before = safe
     for _ in range(_DELTA_T_PASSES):
         utc = J2000_UTC_LABEL + np.round(label * 86400e6).astype("timedelta64[us]")
-        label = safe - _tt_minus_label_s(utc, safe) / SECONDS_PER_DAY
+        before, label = label, safe - _tt_minus_label_s(utc, safe) / SECONDS_PER_DAY
+    # Inside a leap second the passes flit between two labels; the later one is meant.
+    label = np.maximum(before, label)
     utc = J2000_UTC_LABEL + np.round(label * 86400e6).astype("timedelta64[us]")
     utc[bad] = np.datetime64("NaT")
     return utc.reshape(days.shape)

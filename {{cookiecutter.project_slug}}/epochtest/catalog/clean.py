@@ -199,6 +199,7 @@ def _set_repeats_aside(
 ) -> None:
     """Judge duplicates among the rows that are sound by themselves."""
     rows = np.flatnonzero(verdicts.open)
+    rows = rows[table["event_id"].iloc[rows].duplicated(keep=False).to_numpy()]
     sound = table.iloc[rows]
     updated = parse_times(text["updated"].take(pa.array(rows))).utc
     aside, instead, reused = repeated_ids(sound["event_id"], updated, sound["time_utc"].to_numpy())

@@ -35,6 +35,7 @@ def great_circle_km(
 
 
 def signed_longitude_deg(longitude_deg: ArrayLike) -> NDArray[np.float64]:
-    """Longitudes of -180..360 brought to -180..180; values already there are untouched."""
+    """Longitudes of 180..360 brought to -180..0; all others, also impossible ones, untouched."""
     longitude = np.asarray(longitude_deg, dtype=float)
-    return np.where(longitude > 180.0, longitude - 360.0, longitude)
+    eastern = (longitude > 180.0) & (longitude <= 360.0)
+    return np.where(eastern, longitude - 360.0, longitude)

@@ -1,13 +1,14 @@
 """Delimited text to rows of fields, each with the line where it begins.
 
 Two ways to the same rows. The fast one hands the whole text to Arrow and finds line numbers by
-counting line ends outside quotes. It gives up (returns None) when the file is irregular in any
-way: a row with another number of fields, a stray quote, a comment. Then the plain one goes line
-by line and sets the odd rows aside instead of losing them or those after them.
+counting line ends. It gives up (returns None) when the file is irregular in any way: a row with
+another number of fields, a line end inside quotes, a comment. Then the plain one goes line by
+line and sets the odd rows aside instead of losing them or those after them.
 
 The trap in the plain one: a quote that is opened and never closed would swallow the rest of the
-file. So a line with an open quote is joined with following lines only if that yields a whole row
-within MAXIMUM_JOINED lines; otherwise it is faulty alone::
+file, or, if another one is never closed further down, all rows between. So a line with an open
+quote is joined with following lines only if that yields a whole and well-formed row (RFC 4180:
+after a closing quote comes a delimiter) within MAXIMUM_JOINED lines; otherwise it is alone::
 
     12,"Two        <- joined with the next line: 1 row, begins here
     lines",5.1
@@ -18,6 +19,7 @@ within MAXIMUM_JOINED lines; otherwise it is faulty alone::
 from __future__ import annotations
 
 import csv
+from array import array
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -28,6 +30,7 @@ from numpy.typing import NDArray
 
 MAXIMUM_JOINED = 20
 _BLOCK = 1 << 24
+_ROWS_AS_OBJECTS = 1 << 16
 _NEWLINE, _RETURN, _QUOTE, _HASH = 10, 13, 34, 35
 
 
@@ -83,7 +86,6 @@ def fast_records(
             parse_options=pacsv.ParseOptions(
                 delimiter=dialect.delimiter,
                 quote_char='"' if dialect.quoting else False,
-                newlines_in_values=dialect.quoting,
             ),
             convert_options=pacsv.ConvertOptions(
                 include_columns=used,
@@ -122,30 +124,24 @@ def _record_lines(
     starts = np.concatenate(([0], ends[:-1] + 1)).astype(np.int64)[: ends.size]
     if dialect.comments and np.any(view[starts[starts < view.size]] == _HASH):
         return None
-    closed = np.ones(ends.size, dtype=bool)
-    if dialect.quoting:
-        quotes = _positions(view, _QUOTE)
-        closed = np.searchsorted(quotes, ends) % 2 == 0
-        if not closed.all() and quotes.size % 2:
-            return None
-    begins = np.concatenate(([True], closed[:-1]))[: ends.size]
+    if dialect.quoting and np.any(np.searchsorted(_positions(view, _QUOTE), ends) % 2):
+        return None
     length = ends - starts
     only_return = (length == 1) & (view[np.minimum(starts, max(view.size - 1, 0))] == _RETURN)
-    blank = begins & closed & ((length == 0) | only_return)
-    return (np.flatnonzero(begins & ~blank) + first_line).astype(np.int64)
+    rows = (length > 0) & ~only_return
+    return (np.flatnonzero(rows) + first_line).astype(np.int64)
 
 
 def plain_records(
     body: bytes, first_line: int, width: int, wanted: Sequence[int], dialect: Dialect
 ) -> Records:
     """`read_records` line by line; slower, and tolerant of faulty rows."""
-    lines = [line.removesuffix("\r") for line in body.decode("utf-8").split("\n")]
-    columns: list[list[str]] = [[] for _ in wanted]
-    numbers: list[int] = []
-    faults: list[str] = []
+    lines = body.decode("utf-8").split("\n")
+    found = [_Column() for _ in wanted]
+    faults, numbers = _Column(), array("q")
     at = 0
     while at < len(lines):
-        text, number, step = lines[at], first_line + at, 1
+        text, number, step = lines[at].removesuffix("\r"), first_line + at, 1
         if text.strip() == "" or (dialect.comments and text.startswith("#")):
             at += 1
             continue
@@ -153,43 +149,68 @@ def plain_records(
         if dialect.quoting and text.count('"') % 2:
             row, step = _joined(lines, at, width, row, dialect)
         whole = len(row) == width
-        for column, index in zip(columns, wanted, strict=True):
-            column.append(row[index] if whole else "")
+        for column, index in zip(found, wanted, strict=True):
+            column.add(row[index] if whole else "")
         numbers.append(number)
-        faults.append("" if whole else f"{len(row)} fields where the header has {width}")
+        faults.add("" if whole else f"{len(row)} fields where the header has {width}")
         at += step
     return Records(
-        [pa.array(column, pa.large_string()) for column in columns],
-        np.array(numbers, dtype=np.int64),
-        pa.array(faults, pa.large_string()),
+        [column.array() for column in found], np.array(numbers, dtype=np.int64), faults.array()
     )
+
+
+class _Column:
+    """A growing text column that holds only its last rows as Python objects."""
+
+    def __init__(self) -> None:
+        self.recent: list[str] = []
+        self.parts = [pa.array([], pa.large_string())]
+
+    def add(self, text: str) -> None:
+        self.recent.append(text)
+        if len(self.recent) == _ROWS_AS_OBJECTS:
+            self._pack()
+
+    def array(self) -> pa.Array:
+        self._pack()
+        return pa.concat_arrays(self.parts)
+
+    def _pack(self) -> None:
+        self.parts.append(pa.array(self.recent, pa.large_string()))
+        self.recent = []
 
 
 def _joined(
     lines: list[str], at: int, width: int, alone: list[str], dialect: Dialect
 ) -> tuple[list[str], int]:
     """The whole row that begins with the open quote on line ``at``, and how many lines it takes."""
-    text = lines[at]
+    text = lines[at].removesuffix("\r")
     for count in range(2, MAXIMUM_JOINED + 1):
         if at + count > len(lines):
             break
-        text += "\n" + lines[at + count - 1]
+        text += "\n" + lines[at + count - 1].removesuffix("\r")
         if text.count('"') % 2 == 0:
-            row = split_line(text, dialect)
+            row = split_line(text, dialect, strict=True)
             if len(row) == width:
                 return row, count
             break
     return alone, 1
 
 
-def split_line(text: str, dialect: Dialect) -> list[str]:
-    """The fields of one row of text, which may hold line ends inside quotes."""
+def split_line(text: str, dialect: Dialect, strict: bool = False) -> list[str]:
+    """The fields of one row of text, which may hold line ends inside quotes.
+
+    With ``strict``, a text that RFC 4180 does not allow has no fields at all.
+    """
     if not dialect.quoting:
         return text.split(dialect.delimiter)
     reader = csv.reader(
-        text.splitlines(keepends=True), delimiter=dialect.delimiter, skipinitialspace=True
+        text.splitlines(keepends=True),
+        delimiter=dialect.delimiter,
+        skipinitialspace=True,
+        strict=strict,
     )
     try:
         return next(reader, [""])
     except csv.Error:
-        return text.split(dialect.delimiter)
+        return [] if strict else text.split(dialect.delimiter)

@@ -68,9 +68,7 @@ def write_parquet(frame: pd.DataFrame, path: Path) -> None:
 
     No time of writing, path, pandas note or index goes into the file; written in one step.
     """
-    table = pa.Table.from_pandas(
-        as_schema(frame), schema=arrow_schema(), preserve_index=False
-    ).replace_schema_metadata(None)
+    table = pa.Table.from_pandas(as_schema(frame), schema=arrow_schema(), preserve_index=False)
     buffer = pa.BufferOutputStream()
     pq.write_table(table, buffer, compression="zstd", store_schema=False, row_group_size=1 << 18)
     write_whole(path, buffer.getvalue().to_pybytes())

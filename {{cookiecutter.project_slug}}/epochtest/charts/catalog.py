@@ -35,7 +35,8 @@ def magnitude_frequency(magnitudes: ArrayLike, sizes: SizeDistribution) -> Figur
     single = np.bincount(bins - bins.min())
     at = (bins.min() + np.arange(len(single))) * step
     above = np.cumsum(single[::-1])[::-1]
-    low, high = float(at[0] - step), float(at[-1] + step)
+    room = max(step, 0.3 - np.ptp(at) / 2)
+    low, high = float(at[0] - room), float(at[-1] + room)
     x = alt.X(
         "magnitude:Q",
         scale=alt.Scale(domain=[low, high], nice=False, zero=False),
@@ -127,7 +128,7 @@ def cumulative_count(
     running = np.searchsorted(times, at, side="right")
     outer = style.milliseconds([start, end])
     x = style.time_axis("time", float(outer[0]), float(outer[1]))
-    y = style.count_axis("count", "earthquakes so far")
+    y = style.count_axis("count", "earthquakes so far", n)
     layers = [
         alt.Chart(style.frame(time=outer, count=[0, n]))
         .mark_line(color=style.INK, strokeDash=list(style.DASHED), strokeWidth=1.5)
@@ -224,8 +225,8 @@ def _completeness(mc: float, low: float, high: float) -> list[Any]:
         color=style.INK, strokeWidth=1.5, strokeDash=list(style.DOTTED)
     )
     return [
-        rule.encode(x=alt.datum(mc), y=alt.value(-8), y2=alt.value("height")),
-        style.text_at(alt.datum(mc), alt.value(-16), f"Mc {mc:.1f} (completeness)", align=align),
+        rule.encode(x=alt.XDatum(mc), y=alt.YValue(-8), y2=alt.Y2Value("height")),
+        style.text_at(alt.XDatum(mc), alt.YValue(-16), f"Mc {mc:.1f} (completeness)", align=align),
     ]
 
 

@@ -9,9 +9,9 @@ One claim takes one strip::
 
 from __future__ import annotations
 
-import itertools
 import textwrap
 from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
 from typing import Any, NamedTuple
 
 import altair as alt
@@ -87,18 +87,15 @@ def effect_chart(
     names = [
         textwrap.wrap(row.title, _TITLE_CHARACTERS, max_lines=2, placeholder=" …") for row in rows
     ]
-    heights = [_STRIP_PX + _LINE_PX * (len(name) - 1) for name in names]
-    bottom = sum(heights)
-    feet = list(itertools.accumulate(heights))
-    layers: list[Any] = []
-    y = alt.Y("y:Q", scale=alt.Scale(domain=[0, bottom], range=[0, bottom], nice=False), axis=None)
-    for row, name, foot, height in zip(rows, names, feet, heights, strict=True):
-        layers += _words(row, name, foot - height)
-        one = alt.Chart(style.one_row()).mark_rule(color=style.INK, strokeWidth=1.5)
-        marks_top, marks_foot = alt.value(foot - _MARKS_PX - 20), alt.value(foot)
-        layers.append(one.encode(x=alt.datum(1), y=marks_top, y2=marks_foot))
-        layers += _bars(row, foot - _MARKS_PX, x, y, (low, high))
-    layers += _marks(rows, [foot - _MARKS_PX for foot in feet], x, y, (low, high))
+    heights = np.array([_STRIP_PX + _LINE_PX * (len(name) - 1) for name in names])
+    bottom = int(heights.sum())
+    axis = _Axis(x=x, low=low, high=high, bottom=float(bottom))
+    feet = np.cumsum(heights).astype(float)
+    layers = [
+        *_words(rows, names, feet - heights, axis),
+        *_bars(rows, feet - _MARKS_PX, axis),
+        *_marks(rows, feet - _MARKS_PX, axis),
+    ]
     keys = [
         style.Key("measured", "point", style.BLUE, size=90),
         style.Key("exact", "line", style.BLUE, thickness=8, opacity=0.6),
@@ -121,8 +118,9 @@ def effect_chart(
         f"One strip per claim; the vertical rule at 1 means no difference. The thick bar is the "
         f"{numbers.percent(confidence, 0)} interval if earthquakes were independent, "
         f"the thin bar the wider one that allows for their clustering; arrows run on beyond "
-        f"the chart. The open triangle is the smallest ratio that this test would have found with {numbers.percent(power, 0)} "
-        f"power: what lies between 1 and the triangle could have been missed. {CAUTION}"
+        f"the chart. The open triangle is the smallest ratio that this test would have "
+        f"found with {numbers.percent(power, 0)} power: what lies between 1 and the triangle "
+        f"could have been missed. {CAUTION}"
     )
     words = f"{title}, {numbers.counted(len(rows), 'claim', plain=True)}. " + " ".join(
         _in_words(row) for row in rows
@@ -161,61 +159,90 @@ def _domain(rows: Sequence[EffectRow]) -> tuple[float, float]:
     return low / margin, high * margin
 
 
-def _words(row: EffectRow, name: list[str], top: float) -> list[Any]:
-    """Title, finding and numbers of one claim, and the line that parts it from the one above."""
-    found = f"{row.finding}: {numbers.ratio(row.ratio)} ({numbers.interval(row.inflated)})"
-    layers = [style.text_at(alt.value(640), alt.value(top + 15), found, align="right")]
-    for number, line in enumerate(name):
-        y = alt.value(top + 15 + _LINE_PX * number)
-        layers.append(style.text_at(alt.value(0), y, line, bold=True))
-    if top:
-        parting = alt.Chart(style.one_row()).mark_rule(color=style.INK, opacity=0.2)
-        layers.append(parting.encode(x=alt.value(0), x2=alt.value(640), y=alt.value(top)))
-    return layers
+@dataclass(frozen=True)
+class _Axis:
+    """The ratio axis and a y channel in pixels downwards, shared by all layers."""
+
+    x: Any
+    low: float
+    high: float
+    bottom: float
+
+    @property
+    def y(self) -> Any:
+        scale = alt.Scale(domain=[0, self.bottom], range=[0, self.bottom], nice=False)
+        return alt.Y("y:Q", scale=scale, axis=None)
 
 
-def _bars(row: EffectRow, middle: float, x: Any, y: Any, domain: tuple[float, float]) -> list[Any]:
-    """The two intervals of one claim; arrows where they run on beyond the axis."""
-    layers = []
-    for bounds, thick, opacity in ((row.exact, 10, 0.6), (row.inflated, 2, 1.0)):
-        first, last, below, beyond = _clipped(bounds, domain)
-        if first >= last:
-            continue
-        ends = style.frame(ratio=[first], other=[last], y=[middle])
-        layers.append(
-            alt.Chart(ends)
-            .mark_rule(color=style.BLUE, strokeWidth=thick, opacity=opacity)
-            .encode(x=x, x2="other", y=y)
-        )
-        if thick > 2:
-            continue
-        for at, cut, arrow in (
-            (first, below, "triangle-left"), (last, beyond, "triangle-right"),
-        ):  # fmt: skip
-            mark = alt.Chart(style.frame(ratio=[at], y=[middle])).mark_point(
-                shape=arrow if cut else "stroke",
-                filled=True,
-                angle=0 if cut else 90,
-                color=style.BLUE,
-                stroke=style.BLUE,
-                strokeWidth=2,
-                size=70,
-                opacity=1,
-            )
-            layers.append(mark.encode(x=x, y=y))
-    return layers
-
-
-def _clipped(bounds: Bounds, domain: tuple[float, float]) -> tuple[float, float, bool, bool]:
-    """An interval inside the axis, and whether it runs on below and beyond."""
-    low, high = bounds[0], np.inf if bounds[1] is None else bounds[1]
-    first, last = max(low, domain[0]), min(high, domain[1])
-    return first, last, low < domain[0], high > domain[1]
-
-
-def _marks(
-    rows: Sequence[EffectRow], middles: list[float], x: Any, y: Any, domain: tuple[float, float]
+def _words(
+    rows: Sequence[EffectRow], names: list[list[str]], tops: style.Floats, axis: _Axis
 ) -> list[Any]:
+    """Titles left, findings right, a line between strips and the rule at 1 in each strip."""
+    lines = [
+        (top + 15 + _LINE_PX * number, line)
+        for top, name in zip(tops, names, strict=True)
+        for number, line in enumerate(name)
+    ]
+    found = [
+        f"{row.finding}: {numbers.ratio(row.ratio)} ({numbers.interval(row.inflated)})"
+        for row in rows
+    ]
+    feet = np.append(tops[1:], axis.bottom)
+    layers = []
+    for side, texts, heights, weight in (
+        ("left", [line for _, line in lines], [y for y, _ in lines], "bold"),
+        ("right", found, tops + 15, "normal"),
+    ):
+        edge = axis.low if side == "left" else axis.high
+        data = style.frame(ratio=np.full(len(texts), edge), y=heights, text=texts)
+        mark = alt.Chart(data).mark_text(
+            align=side, baseline="middle", fontSize=style.LABEL_PX, fontWeight=weight,
+            color=style.INK,
+        )  # fmt: skip
+        layers.append(mark.encode(x=axis.x, y=axis.y, text="text:N"))
+    ones = style.frame(ratio=np.ones(len(rows)), y=feet - _MARKS_PX - 20, foot=feet)
+    rule = alt.Chart(ones).mark_rule(color=style.INK, strokeWidth=1.5)
+    layers.append(rule.encode(x=axis.x, y=axis.y, y2="foot"))
+    if len(rows) > 1:
+        ends = style.frame(
+            ratio=np.full(len(rows) - 1, axis.low),
+            other=np.full(len(rows) - 1, axis.high),
+            y=tops[1:],
+        )
+        parting = alt.Chart(ends).mark_rule(color=style.INK, opacity=0.2)
+        layers.append(parting.encode(x=axis.x, x2="other", y=axis.y))
+    return layers
+
+
+def _bars(rows: Sequence[EffectRow], middles: style.Floats, axis: _Axis) -> list[Any]:
+    """The two intervals of every claim; arrows where they run on beyond the axis."""
+    layers = []
+    for intervals, thick, opacity in (
+        ([row.exact for row in rows], 10, 0.6),
+        ([row.inflated for row in rows], 2, 1.0),
+    ):
+        low = np.array([bounds[0] for bounds in intervals], dtype=float)
+        high = np.array([np.inf if b[1] is None else b[1] for b in intervals], dtype=float)
+        first, last = np.maximum(low, axis.low), np.minimum(high, axis.high)
+        shown = first < last
+        data = style.frame(ratio=first[shown], other=last[shown], y=middles[shown])
+        bar = alt.Chart(data).mark_rule(color=style.BLUE, strokeWidth=thick, opacity=opacity)
+        layers.append(bar.encode(x=axis.x, x2="other", y=axis.y))
+    for ends, cut, arrow in (
+        (first, low < axis.low, "triangle-left"), (last, high > axis.high, "triangle-right"),
+    ):  # fmt: skip
+        for which, shape, angle in ((cut, arrow, 0), (~cut, "stroke", 90)):
+            here = shown & which
+            if here.any():
+                mark = alt.Chart(style.frame(ratio=ends[here], y=middles[here])).mark_point(
+                    shape=shape, angle=angle, filled=True, color=style.BLUE, stroke=style.BLUE,
+                    strokeWidth=2, size=70, opacity=1,
+                )  # fmt: skip
+                layers.append(mark.encode(x=axis.x, y=axis.y))
+    return layers
+
+
+def _marks(rows: Sequence[EffectRow], middles: style.Floats, axis: _Axis) -> list[Any]:
     """Points of all claims: asserted just above the bars, measured on, detectable just below."""
     layers = []
     for values, shift, look in (
@@ -223,15 +250,12 @@ def _marks(
         ([row.detectable for row in rows], 13, {"shape": "triangle-up", "color": style.VERMILION}),
         ([row.ratio for row in rows], 0, {"shape": "circle", "color": style.BLUE, "filled": True}),
     ):
-        shown = [
-            (value, middle + shift)
-            for value, middle in zip(values, middles, strict=True)
-            if value is not None and domain[0] <= value <= domain[1]
-        ]
-        if shown:
-            data = style.frame(ratio=[v for v, _ in shown], y=[m for _, m in shown])
+        at = np.array([np.nan if value is None else value for value in values], dtype=float)
+        shown = (at >= axis.low) & (at <= axis.high)
+        if shown.any():
+            data = style.frame(ratio=at[shown], y=middles[shown] + shift)
             mark = alt.Chart(data).mark_point(
                 **{"filled": False, "size": 80, "strokeWidth": 2.2, "opacity": 1, **look}
             )
-            layers.append(mark.encode(x=x, y=y))
+            layers.append(mark.encode(x=axis.x, y=axis.y))
     return layers

@@ -40,14 +40,19 @@ def epochs_per_year(per_year: Mapping[str, int] | Mapping[int, int]) -> Figure:
             title="year" if width == 1 else f"{word} from",
             grid=False,
             format="d",
-            tickMinStep=1,
+            values=style.whole_ticks(ends[0], ends[1], 9),
             labelExpr=style.NUMBER_LABELS,
         ),
     )
     bars = (
         alt.Chart(data)
         .mark_rect(color=style.GREEN, opacity=style.BAR_OPACITY)
-        .encode(x=x, x2="right", y=style.count_axis("count", f"epochs per {word}"), y2=alt.datum(0))
+        .encode(
+            x=x,
+            x2="right",
+            y=style.count_axis("count", f"epochs per {word}", counts.max()),
+            y2=alt.Y2Datum(0),
+        )
     )
     total = sum(table.values())
     caption = (
@@ -89,13 +94,18 @@ def interval_histogram(interval_days: ArrayLike) -> Figure:
     layers = [
         alt.Chart(data)
         .mark_rect(color=style.GREEN, opacity=style.BAR_OPACITY)
-        .encode(x=x, x2="right", y=style.count_axis("count", "intervals"), y2=alt.datum(0)),
+        .encode(
+            x=x,
+            x2="right",
+            y=style.count_axis("count", "intervals", counts.max()),
+            y2=alt.Y2Datum(0),
+        ),
         alt.Chart(style.one_row())
         .mark_rule(color=style.INK, strokeWidth=2, strokeDash=list(style.DASHED))
-        .encode(x=alt.datum(median), y=alt.value(-6), y2=alt.value("height")),
+        .encode(x=alt.XDatum(median), y=alt.YValue(-6), y2=alt.Y2Value("height")),
         style.text_at(
-            alt.datum(median),
-            alt.value(-15),
+            alt.XDatum(median),
+            alt.YValue(-15),
             f"median {numbers.days(round(median, 2))} days",
             align=align,
         ),

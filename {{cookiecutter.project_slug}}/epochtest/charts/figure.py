@@ -49,7 +49,7 @@ class Figure:
     def saying(cls, message: str, *, kind: str, title: str) -> Figure:
         """A figure for when there is nothing to draw: one plain sentence in its place."""
         chart = style.finished(
-            [style.text_at(altair.value(0), altair.value(20), message, size=15)],
+            [style.text_at(altair.XValue(0), altair.YValue(20), message, size=15)],
             height_px=60,
         )
         return cls.of(chart, kind=kind, title=title, caption=message, alt=f"{title}. {message}")

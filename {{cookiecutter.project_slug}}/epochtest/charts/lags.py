@@ -72,14 +72,14 @@ def lag_chart(
             labelExpr=style.NUMBER_LABELS,
         ),
     )
-    y = style.count_axis("count", "earthquakes per bin", domain=domain)
+    y = style.count_axis("count", "earthquakes per bin", domain[1], low=domain[0])
     gap = min(1.0, 120.0 / n)
     layers = []
     if bars:
         layers.append(
             alt.Chart(data)
             .mark_rect(color=style.BLUE, opacity=style.BAR_OPACITY, stroke=None, xOffset=gap / 2)
-            .encode(x=x, x2="right", y=y, y2=alt.datum(0))
+            .encode(x=x, x2="right", y=y, y2=alt.Y2Datum(0))
         )
     layers.append(
         alt.Chart(data)
@@ -87,7 +87,7 @@ def lag_chart(
         .encode(
             x=x,
             x2="right",
-            y=style.count_axis("low", "earthquakes per bin", domain=domain),
+            y=style.count_axis("low", "earthquakes per bin", domain[1], low=domain[0]),
             y2="high",
         )
     )
@@ -148,11 +148,11 @@ def _window(window_days: tuple[float, float], outer: list[float]) -> list[object
     bar = alt.Chart(style.one_row()).mark_rule(**look)
     ends_chart = alt.Chart(style.frame(left=[first, last]))
     return [
-        bar.encode(x=alt.datum(first), x2=alt.datum(last), y=alt.value(-8)),
+        bar.encode(x=alt.XDatum(first), x2=alt.X2Datum(last), y=alt.YValue(-8)),
         ends_chart.mark_rule(color=style.PURPLE, strokeWidth=1.5, strokeDash=list(style.DOTTED))
-        .encode(x="left:Q", y=alt.value(-8), y2=alt.value("height")),
+        .encode(x="left:Q", y=alt.YValue(-8), y2=alt.Y2Value("height")),
         style.text_at(
-            alt.datum(anchor), alt.value(-20), f"window of the claim: {ends}", align=align
+            alt.XDatum(anchor), alt.YValue(-20), f"window of the claim: {ends}", align=align
         ),
     ]  # fmt: skip
 

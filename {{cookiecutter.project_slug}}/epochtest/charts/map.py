@@ -189,11 +189,13 @@ def _cells(
     i, j = np.nonzero(grid)
     classes = _HALF_DECADES if grid.max() < 1000 else _DECADES
     klass = np.searchsorted(classes, grid[i, j], side="right") - 1
+    top = int(klass.max())
+    steps = max(1, top)
     data = style.frame(
         lon=(lon_edges[j] + lon_edges[j + 1]) / 2,
         lat=(lat_edges[i] + lat_edges[i + 1]) / 2,
-        area=_cell_area(klass, side),
-        opacity=_cell_opacity(klass),
+        area=_cell_area(klass / steps, side),
+        opacity=_cell_opacity(klass / steps),
     )
     squares = (
         alt.Chart(data)
@@ -206,27 +208,27 @@ def _cells(
         )
     )
     keys = []
-    top = int(klass.max())
     for number in range(top + 1):
         first = classes[number]
         last = classes[number + 1] - 1 if number < top else int(grid.max())
-        label = f"{first}–{numbers.count(last)}" if last > first else f"{first}"
+        label = f"{numbers.count(first)}–{numbers.count(last)}"
+        label = label if last > first else numbers.count(first)
         keys.append(
             style.Key(
                 label,
                 "point",
                 style.BLUE,
                 shape="square",
-                opacity=float(_cell_opacity(np.array(number))),
-                size=float(_cell_area(np.array(number), side)),
+                opacity=_cell_opacity(number / steps),
+                size=_cell_area(number / steps, side),
             )
         )
     return [squares], keys
 
 
-def _cell_area(klass: Any, side: float) -> Any:
-    return (side * (0.5 + 0.1 * klass)) ** 2
+def _cell_area(depth: Any, side: float) -> Any:
+    return (side * (0.5 + 0.5 * depth)) ** 2
 
 
-def _cell_opacity(klass: Any) -> Any:
-    return 0.5 + 0.1 * klass
+def _cell_opacity(depth: Any) -> Any:
+    return 0.5 + 0.5 * depth

@@ -44,8 +44,7 @@ def null_histogram(
             "No earthquakes inside the windows at any shift.", kind="null", title=title
         )
     upward = direction == "more" or (direction == "either" and observed >= mean)
-    left, width, share = _bars(values, weights, observed, upward=upward)
-    extreme = left >= observed if upward else left + width - 1 <= observed
+    left, width, share, extreme = _bars(values, weights, observed, upward=upward)
     data = style.frame(
         left=left - 0.5, right=left + width - 0.5, share=100 * share, extreme=extreme
     )
@@ -57,7 +56,7 @@ def null_histogram(
         axis=alt.Axis(
             title="hits (earthquakes inside the windows)",
             grid=False,
-            tickMinStep=1,
+            values=style.whole_ticks(low, high),
             format=",d",
             labelExpr=style.NUMBER_LABELS,
         ),
@@ -71,15 +70,15 @@ def null_histogram(
     rule = alt.Chart(style.one_row())
     layers = [
         alt.Chart(data[~data["extreme"]]).mark_rect(color=style.BLUE, opacity=style.BAR_OPACITY)
-        .encode(x=x, x2="right", y=y, y2=alt.datum(0)),
+        .encode(x=x, x2="right", y=y, y2=alt.Y2Datum(0)),
         alt.Chart(data[data["extreme"]]).mark_rect(color=style.VERMILION, opacity=1)
-        .encode(x=x, x2="right", y=y, y2=alt.datum(0)),
+        .encode(x=x, x2="right", y=y, y2=alt.Y2Datum(0)),
         rule.mark_rule(color=style.INK, strokeDash=list(style.DASHED), strokeWidth=1.5)
-        .encode(x=alt.datum(mean), y=alt.value(0), y2=alt.value("height")),
+        .encode(x=alt.XDatum(mean), y=alt.YValue(0), y2=alt.Y2Value("height")),
         rule.mark_rule(color=style.INK, strokeWidth=3)
-        .encode(x=alt.datum(observed), y=alt.value(-8), y2=alt.value("height")),
+        .encode(x=alt.XDatum(observed), y=alt.YValue(-8), y2=alt.Y2Value("height")),
         style.text_at(
-            alt.datum(observed), alt.value(-18),
+            alt.XDatum(observed), alt.YValue(-18),
             f"observed {numbers.count(observed)}, {numbers.p_phrase(p)}",
             align=align, bold=True,
         ),
@@ -114,12 +113,16 @@ def null_histogram(
 
 def _bars(
     values: NDArray[np.int64], weights: NDArray[np.int64], observed: int, *, upward: bool
-) -> tuple[NDArray[np.int64], int, style.Floats]:
-    """First value, width in hits and share of each bar; the tail's end falls on an edge."""
+) -> tuple[NDArray[np.int64], int, style.Floats, NDArray[np.bool_]]:
+    """First value, width in hits, share of each bar and whether it lies in the tail.
+
+    The tail's end falls on an edge between bars.
+    """
     low, high = int(values.min()), int(values.max())
     width = max(1, -(-(high - low + 1) // _MOST_BARS))
     edge = observed if upward else observed + 1
     start = edge - width * (-(-(edge - low) // width))
     index = (values - start) // width
     share = np.bincount(index, weights=weights) / weights.sum()
-    return start + width * np.arange(len(share)), width, share
+    left = start + width * np.arange(len(share))
+    return left, width, share, left >= observed if upward else left <= observed

@@ -17,6 +17,7 @@ from epochtest.charts import style
 
 _WIDEST_PX, _NARROWEST_PX = 600.0, 360.0
 _TALLEST_PX, _FLATTEST_PX = 480.0, 150.0
+_HAIR_DEG = 1e-6
 _STEPS_DEG = (0.1, 0.2, 0.5, 1, 2, 5, 10, 15, 20, 30, 45, 60)
 _WEST_OR_EAST = (
     "format(abs((datum.value + 900) % 360 - 180), '~g') + '°' + "
@@ -35,7 +36,8 @@ def west_edge(lon_deg: ArrayLike) -> float:
         return -180.0
     gaps = np.diff(np.append(circle, circle[0] + 360.0))
     start = float(circle[(int(np.argmax(gaps)) + 1) % len(circle)])
-    return start if start < 180.0 else start - 360.0
+    # A hair to the west: rounding must not throw the first epicentre a turn to the east.
+    return (start if start < 180.0 else start - 360.0) - _HAIR_DEG
 
 
 def unwrap(lon_deg: ArrayLike, west_deg: float) -> style.Floats:

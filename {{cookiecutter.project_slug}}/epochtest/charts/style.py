@@ -44,7 +44,7 @@ _CHARACTER_PX = 6.9  # wide enough for the widest common sans-serif at 13 pixels
 NUMBER_LABELS = "replace(replace(datum.label, regexp(',', 'g'), '\u2009'), regexp('^-'), '\u2212')"
 
 Floats = NDArray[np.float64]
-KeyMark = Literal["bar", "band", "line", "point", "bracket"]
+KeyMark = Literal["bar", "band", "line", "point"]
 
 
 @dataclass(frozen=True)
@@ -103,15 +103,15 @@ def key_rows(keys: Sequence[Key]) -> list[list[tuple[float, Key]]]:
 
 def _key_mark(key: Key, x: float, y: float) -> Any:
     chart = alt.Chart(one_row())
-    left, right = alt.value(x), alt.value(x + 22)
+    left, right = alt.XValue(x), alt.X2Value(x + 22)
     if key.mark == "bar":
         mark = chart.mark_rect(color=key.colour, opacity=key.opacity)
         return mark.encode(
-            x=alt.value(x + 4), x2=alt.value(x + 18), y=alt.value(y - 7), y2=alt.value(y + 6)
+            x=alt.XValue(x + 4), x2=alt.X2Value(x + 18), y=alt.YValue(y - 7), y2=alt.Y2Value(y + 6)
         )
     if key.mark == "band":
         mark = chart.mark_rect(color=key.colour, opacity=key.opacity)
-        return mark.encode(x=left, x2=right, y=alt.value(y - 6), y2=alt.value(y + 6))
+        return mark.encode(x=left, x2=right, y=alt.YValue(y - 6), y2=alt.Y2Value(y + 6))
     if key.mark == "point":
         mark = chart.mark_point(
             shape=key.shape,
@@ -121,20 +121,14 @@ def _key_mark(key: Key, x: float, y: float) -> Any:
             strokeWidth=1.8,
             opacity=key.opacity,
         )
-        return mark.encode(x=alt.value(x + 12), y=alt.value(y))
-    if key.mark == "bracket":
-        path = "M-1,0.6L-1,-0.2L1,-0.2L1,0.6"
-        mark = chart.mark_point(
-            shape=path, filled=False, color=key.colour, size=300, strokeWidth=3, opacity=1
-        )
-        return mark.encode(x=alt.value(x + 11), y=alt.value(y - 1))
+        return mark.encode(x=alt.XValue(x + 12), y=alt.YValue(y))
     mark = chart.mark_rule(
         color=key.colour,
         strokeWidth=key.thickness,
         strokeDash=list(key.dash) or [1, 0],
         opacity=key.opacity,
     )
-    return mark.encode(x=left, x2=right, y=alt.value(y))
+    return mark.encode(x=left, x2=right, y=alt.YValue(y))
 
 
 def key_layers(keys: Sequence[Key], above_px: float = 0.0) -> list[Any]:
@@ -145,7 +139,7 @@ def key_layers(keys: Sequence[Key], above_px: float = 0.0) -> list[Any]:
         y = -above_px - 14.0 - KEY_ROW_PX * number
         for x, key in row:
             layers.append(_key_mark(key, x, y))
-            layers.append(text_at(alt.value(x + 28), alt.value(y), key.label))
+            layers.append(text_at(alt.XValue(x + 28), alt.YValue(y), key.label))
     return layers
 
 
@@ -202,13 +196,31 @@ def time_axis(field: str, first_ms: float, last_ms: float, *, labels: bool = Tru
     return alt.X(f"{field}:T", scale=scale, axis=axis)
 
 
+def whole_ticks(low: float, high: float, most: int = 10) -> list[int]:
+    """Whole numbers in [low, high] at steps of 1, 2 or 5 times a power of ten, ``most`` or so."""
+    reach = max(high - low, 1.0) / most
+    power = 10 ** max(0, int(np.floor(np.log10(reach))))
+    step = next((k * power for k in (1, 2, 5) if k * power >= reach), 10 * power)
+    first = int(np.ceil(low / step)) * step
+    return list(range(first, int(np.floor(high)) + 1, step))
+
+
 def count_axis(
-    field: str, title: str | list[str], *, domain: Sequence[float] | None = None, **look: Any
+    field: str,
+    title: str | list[str],
+    high: float,
+    *,
+    low: float = 0.0,
+    most_ticks: int = 6,
+    **look: Any,
 ) -> Any:
-    """A y channel of whole numbers from 0 upwards, or over ``domain``."""
-    scale = alt.Scale(zero=True)
-    if domain is not None:
-        scale = alt.Scale(domain=list(domain), nice=False, zero=False)
-    shape = {"format": ",d", "tickMinStep": 1, "tickCount": 6, "labelExpr": NUMBER_LABELS}
-    axis = alt.Axis(title=title, **{**shape, **look})
+    """A y channel from ``low`` to ``high``, labelled at whole numbers only."""
+    axis = alt.Axis(
+        title=title,
+        format=",d",
+        values=whole_ticks(low, high, most_ticks),
+        labelExpr=NUMBER_LABELS,
+        **look,
+    )
+    scale = alt.Scale(domain=[float(low), float(max(high, 1.0))], nice=False, zero=False)
     return alt.Y(f"{field}:Q", scale=scale, axis=axis)

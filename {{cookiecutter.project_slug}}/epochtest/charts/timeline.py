@@ -76,10 +76,11 @@ def timeline(
     else:
         lower = _epochs(epochs, outer, window_days)
     keys = [style.Key(f"earthquakes per {word}", "bar", style.BLUE, opacity=style.BAR_OPACITY)]
+    order = "largest" if len(largest) == 1 else "largest, left to right"
     if largest:
         keys.append(
             style.Key(
-                f"largest, left to right: {', '.join(largest)}",
+                f"{order}: {', '.join(largest)}",
                 "point",
                 style.VERMILION,
                 shape="diamond",
@@ -129,14 +130,14 @@ def _earthquakes(
     ms = style.milliseconds(edges)
     data = style.frame(left=ms[:-1], right=ms[1:], count=counts)
     x = style.time_axis("left", outer[0], outer[1], labels=False)
-    y = style.count_axis("count", f"earthquakes per {word}", **_EVEN)
+    y = style.count_axis("count", f"earthquakes per {word}", counts.max(), **_EVEN)
     bars = (
         alt.Chart(data)
         .mark_rect(color=style.BLUE, opacity=style.BAR_OPACITY)
-        .encode(x=x, x2="right", y=y, y2=alt.datum(0))
+        .encode(x=x, x2="right", y=y, y2=alt.Y2Datum(0))
     )
     if len(times) == 0:
-        nothing = style.text_at(alt.value(_PLOT_PX / 2), alt.value(95), "no earthquakes")
+        nothing = style.text_at(alt.XValue(_PLOT_PX / 2), alt.YValue(95), "no earthquakes")
         return bars + nothing, []
     known = np.flatnonzero(np.isfinite(sizes))
     order = known[np.lexsort((times[known], -sizes[known]))][:_LARGEST]
@@ -147,7 +148,7 @@ def _earthquakes(
         .mark_point(
             shape="diamond", filled=True, size=90, color=style.VERMILION, opacity=1, clip=False
         )
-        .encode(x=x, y=alt.value(-6))
+        .encode(x=x, y=alt.YValue(-6))
     )
     return (bars + marks if len(order) else bars), named
 
@@ -162,11 +163,11 @@ def _epoch_counts(
 ) -> Any:
     edges, counts = calendar_counts(epochs, start, end, unit)
     ms = style.milliseconds(edges)
-    y = style.count_axis("count", ["epochs", f"per {word}"], tickCount=3, **_EVEN)
+    y = style.count_axis("count", ["epochs", f"per {word}"], counts.max(), most_ticks=3, **_EVEN)
     bars = (
         alt.Chart(style.frame(left=ms[:-1], right=ms[1:], count=counts))
         .mark_rect(color=style.GREEN, opacity=style.BAR_OPACITY)
-        .encode(x=style.time_axis("left", *outer), x2="right", y=y, y2=alt.datum(0))
+        .encode(x=style.time_axis("left", *outer), x2="right", y=y, y2=alt.Y2Datum(0))
     )
     return bars.properties(width=_PLOT_PX, height=70)
 
@@ -179,7 +180,7 @@ def _epochs(
     x = style.time_axis("left", outer[0], outer[1])
     if len(epochs) == 0:
         blank = alt.Chart(style.frame(left=list(outer))).mark_rule(opacity=0).encode(x=x)
-        words = style.text_at(alt.value(_PLOT_PX / 2), alt.value(20), "no epochs")
+        words = style.text_at(alt.XValue(_PLOT_PX / 2), alt.YValue(20), "no epochs")
         return (blank + words).properties(width=_PLOT_PX, height=40)
     ms = style.milliseconds(epochs)
     data = style.frame(
@@ -190,12 +191,12 @@ def _epochs(
     strip = (
         alt.Chart(data)
         .mark_rect(color=style.GREEN, opacity=0.35)
-        .encode(x=alt.X("first:T"), x2="last", y=alt.value(4), y2=alt.value(30))
+        .encode(x=alt.X("first:T"), x2="last", y=alt.YValue(4), y2=alt.Y2Value(30))
     )
     ticks = (
         alt.Chart(data)
         .mark_rule(color=style.GREEN, strokeWidth=1.5)
-        .encode(x=x, y=alt.value(0), y2=alt.value(34))
+        .encode(x=x, y=alt.YValue(0), y2=alt.Y2Value(34))
     )
-    label = style.text_at(alt.value(-8), alt.value(17), "epochs", align="right")
+    label = style.text_at(alt.XValue(-8), alt.YValue(17), "epochs", align="right")
     return (strip + ticks + label).properties(width=_PLOT_PX, height=34)

@@ -24,7 +24,6 @@ from numpy.typing import ArrayLike
 from epochtest.inference.shift import circular_correlation
 from epochtest.inference.windows import (
     DAY_US,
-    HOUR_US,
     Counts,
     Grid,
     WindowDays,
@@ -163,8 +162,3 @@ def lag_profile(
         window_days=window_days,
         n_epochs=int(epochs_per_bin.sum()),
     )
-
-
-def bin_hours(axis: LagAxis, grid: Grid) -> float:
-    """Width of a lag bin in hours."""
-    return axis.width * grid.step_us / HOUR_US

@@ -29,6 +29,8 @@ from epochtest.study.results import NullResult
 
 SAFE_ROUNDING = 0.25
 """Distance from a whole number at which a transformed count is no longer trusted."""
+LARGEST_SUM = 2.0**48
+"""Sums beyond which float64 has few fractional bits left, so that rounding would look exact."""
 
 
 def circular_correlation(kernel: Counts | Mask, series: Counts) -> Counts:
@@ -43,7 +45,7 @@ def circular_correlation(kernel: Counts | Mask, series: Counts) -> Counts:
     raw = scipy.fft.irfft(spectrum, n)
     whole = np.rint(raw)
     error = float(np.abs(raw - whole).max())
-    if error >= SAFE_ROUNDING:
+    if error >= SAFE_ROUNDING or float(np.abs(raw).max()) > LARGEST_SUM:
         raise ArithmeticError(
             f"counts are too large to be correlated exactly (rounding error {error:.2f}); "
             "check the catalog for a bin with an impossible number of earthquakes"

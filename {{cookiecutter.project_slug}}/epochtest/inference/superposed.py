@@ -28,7 +28,11 @@ from epochtest.study.settings import InferenceSettings
 COARSE_GRID = 0.02
 """Relative difference of grid and exact coverage above which the grid is called coarse."""
 FEWEST_EFFECTIVE_SHIFTS = 100
-"""Below this many independent shifts the normal approximation of the power is optimistic."""
+"""Below this many independent shifts the power at small alpha is lower than stated.
+
+Measured with evenly spaced epochs (29.53 days, windows of 3 days, 17 effective shifts): .75-.81
+at alpha .05 but .64 at alpha .01 for a stated .80.
+"""
 
 
 @dataclass(frozen=True)
@@ -143,8 +147,9 @@ def _warnings(
     elif null.effective_shifts < FEWEST_EFFECTIVE_SHIFTS:
         found.append(
             f"Only {null.effective_shifts:.0f} of the {null.shifts} shifts are independent "
-            "(evenly spaced epochs, few epochs or long windows): p is coarse, and the "
-            "detectable ratio is optimistic."
+            "(evenly spaced epochs, few epochs or long windows): p stays valid, but where a "
+            f"decision needs p below about {1.0 / null.effective_shifts:.2g}, the price of several "
+            "claims included, the power is lower than stated."
         )
     return tuple(found)
 

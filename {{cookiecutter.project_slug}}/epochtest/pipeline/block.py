@@ -33,6 +33,11 @@ def heading(level: int, text: str, anchor: str = "") -> Block:
     return Block(f"<h{level}{mark}>{escape(text)}</h{level}>", text)
 
 
+def link(anchor: str, text: str) -> str:
+    """Markup of a link to a place on the same page."""
+    return f'<a href="#{escape(anchor)}">{escape(text)}</a>'
+
+
 def paragraph(text: str, look: str = "") -> Block:
     """A paragraph; ``look`` is a class of the page's style sheet."""
     mark = f' class="{look}"' if look else ""

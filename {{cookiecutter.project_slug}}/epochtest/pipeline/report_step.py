@@ -19,7 +19,7 @@ from epochtest.inference.finding import decide, sentence
 from epochtest.inference.multiplicity import adjust_family
 from epochtest.inference.superposed import with_family
 from epochtest.pipeline import catalog_step, epochs_step
-from epochtest.pipeline.block import Block, heading, paragraph, quotation, stacked
+from epochtest.pipeline.block import Block, heading, link, paragraph, quotation, stacked
 from epochtest.pipeline.catalog_step import CatalogStep
 from epochtest.pipeline.frames import artifact_folder, output_folder, read_result, result_text
 from epochtest.pipeline.hashing import file_sha256, library_sha256, package_versions
@@ -27,6 +27,17 @@ from epochtest.pipeline.store import RESULT
 from epochtest.pipeline.superposed_step import SuperposedStep, tested
 from epochtest.study.load import LoadedStudy, load_study
 from epochtest.study.results import CAUTION, ClaimResult, TestResult
+
+# Anchors set in 4_report.ipynb.
+SECTIONS = {
+    "findings": "Findings",
+    "claims": "The claims, one by one",
+    "nulls": "Nulls side by side",
+    "catalog": "The catalog",
+    "epochs": "The epochs",
+    "provenance": "Provenance",
+    "cautions": "Cautions",
+}
 
 
 @dataclass(frozen=True)
@@ -76,6 +87,14 @@ class ReportStep:
     def caution(self) -> Block:
         """No forecast, no warning."""
         return paragraph(CAUTION, "caution")
+
+    def contents(self) -> Block:
+        """Links to the sections and to every claim."""
+        claims = " · ".join(link(f"claim-{c.id}", c.title) for c in self.study.claims)
+        parts = [link(anchor, words) for anchor, words in SECTIONS.items()]
+        parts[1] += f" ({claims})"
+        items = "".join(f"<li>{part}</li>" for part in parts)
+        return Block(f'<nav aria-label="Contents"><ul>{items}</ul></nav>', "Contents")
 
     def findings(self) -> tables.HtmlTable:
         """One row per claim."""

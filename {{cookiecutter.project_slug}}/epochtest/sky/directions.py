@@ -99,7 +99,9 @@ def apparent_vectors(
     """Apparent geocentric vectors (3, n) of each body in km, mean ecliptic and equinox of date.
 
     The lengths are light-time distances in the barycentric frame (for the Moon up to 37 km off
-    the geometric distance, because the Earth moves on meanwhile). Raises EphemerisSpanError outside the kernel.
+    the geometric distance, because the Earth moves on meanwhile).
+
+    Raises EphemerisSpanError outside the kernel.
     """
     days = np.atleast_1d(np.asarray(tdb_days, dtype=float))
     observer, velocity = ephemeris.state("earth", days)

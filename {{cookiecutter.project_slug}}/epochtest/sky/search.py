@@ -149,9 +149,9 @@ def _beyond_stations(
         (before < 0.0) & (after >= 0.0) & (middle > 0.0)
     )
     near = np.abs(middle) <= np.maximum(np.abs(before), np.abs(after))
-    near[:, [0, 1, -2, -1]] = np.abs(middle[:, [0, 1, -2, -1]]) < (
-        HALF_TURN_DEG / 2 if angle else np.inf
-    )
+    reach = HALF_TURN_DEG / 2 if angle else np.inf
+    for end in (slice(None, 2), slice(-2, None)):
+        near[:, end] = np.abs(middle[:, end]) < reach
     series, column = np.nonzero(turns & near)
     column = column + 1
     if series.size == 0:

@@ -114,6 +114,17 @@ def test_a_quote_never_closed_swallows_no_row(tmp_path: Path) -> None:
     assert twice.quarantined["line"].tolist() == [2, 5]
     in_turn = content.replace("x,b", '"open,b')
     assert read(tmp_path, in_turn).quarantined["line"].tolist() == [2, 3]
+    too_wide = content.replace("2001-01-02,1,2,5,x,b", '2001-01-02",2,3')
+    assert read(tmp_path, too_wide).quarantined["line"].tolist() == [2, 3]
+
+
+def test_two_irregularities_that_cancel_do_not_shift_line_numbers() -> None:
+    """A row on two lines and two rows on one (a bare CR) leave the count right, not the lines."""
+    body = b'a,"x\ny",1\nb,c,2\rd,e,3\n'
+    assert fast_records(body, 2, 3, [0], Dialect(",")) is None
+    found = plain_records(body, 2, 3, [0], Dialect(","))
+    assert found.line.tolist() == [2, 4]
+    assert found.fault.to_pylist() == ["", "5 fields where the header has 3"]
 
 
 def test_ragged_rows_are_set_aside_with_their_line(tmp_path: Path) -> None:

@@ -93,6 +93,7 @@ def test_make_knows_its_targets(target: str) -> None:
         cwd=ROOT, capture_output=True, text=True, check=False,
     )  # fmt: skip
     assert done.returncode == 0, done.stderr
+    assert "Nothing to be done" not in done.stdout
 
 
 def test_make_without_a_fit_python_says_so(tmp_path: Path) -> None:

@@ -202,15 +202,10 @@ def split_line(text: str, dialect: Dialect, strict: bool = False) -> list[str]:
 
     With ``strict``, a text that RFC 4180 does not allow has no fields at all.
     """
-    if not dialect.quoting:
+    if not dialect.quoting or '"' not in text:
         return text.split(dialect.delimiter)
-    reader = csv.reader(
-        text.splitlines(keepends=True),
-        delimiter=dialect.delimiter,
-        skipinitialspace=True,
-        strict=strict,
-    )
+    reader = csv.reader([text], delimiter=dialect.delimiter, skipinitialspace=True, strict=strict)
     try:
-        return next(reader, [""])
+        return next(reader)
     except csv.Error:
         return [] if strict else text.split(dialect.delimiter)

@@ -134,7 +134,7 @@ class Store:
         """Folder of the newest artifact of a step; MissingArtifactError if none was made."""
         try:
             table = json.loads((self.runs / "current.json").read_text(encoding="utf-8"))
-            return self.root / table[step]
+            return self.root / str(table[step])
         except (OSError, ValueError, KeyError):
             raise MissingArtifactError(
                 f"runs/: no artifact of {step} yet; run `python -m epochtest run` first.",

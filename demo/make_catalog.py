@@ -135,7 +135,7 @@ def blemished(frame: pd.DataFrame, rng: np.random.Generator) -> pd.DataFrame:
     twice, blasts, sizeless = frame.loc[rows[:20]], frame.loc[rows[20:32]], frame.loc[rows[32:40]]
     # The same earthquake from a second agency: a little later, a little elsewhere.
     again = twice.assign(
-        time=twice["time"] + rng.uniform(0.5, 6.0, 20) * np.timedelta64(1_000_000, "us"),
+        time=twice["time"] + rng.uniform(0.2, 1.8, 20) * np.timedelta64(1_000_000, "us"),
         latitude=twice["latitude"] + rng.normal(0.0, 0.1, 20),
         mag=twice["mag"] + rng.choice([-0.1, 0.0, 0.1], 20),
         id="b" + twice["id"],

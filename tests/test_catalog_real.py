@@ -7,9 +7,9 @@ from pathlib import Path
 import numpy as np
 import pytest
 from epochtest.catalog.clean import Cleaned
-from epochtest.catalog.files import sha256_of
 from epochtest.catalog.load import load_catalog
 from epochtest.catalog.summary import summarise
+from epochtest.files import sha256_of
 from epochtest.study.results import CatalogResult
 from epochtest.study.settings import CatalogSettings, Source, Sources
 

@@ -7,9 +7,9 @@ from pathlib import Path
 
 import pytest
 from epochtest.catalog import files as files_module
-from epochtest.catalog.files import sha256_of, write_whole
 from epochtest.catalog.sources import SOURCES_FILE, append_source, verify_sources
 from epochtest.errors import CatalogError, ChangedInputError, ProtocolError
+from epochtest.files import sha256_of, write_whole
 from epochtest.study.settings import Source, Sources
 
 FILE = "catalogs/quakes.csv"

@@ -13,11 +13,11 @@ from types import ModuleType
 from typing import Any
 
 import pytest
-from tests.studies import REPOSITORY, tree
-
 from epochtest.pipeline.plan import Plan
 from epochtest.pipeline.store import Store
 from epochtest.study.load import load_study
+
+from tests.studies import REPOSITORY, tree
 
 EXAMPLE = REPOSITORY / "example_rendered"
 REFRESH = "run `make example` and commit the result"

@@ -8,6 +8,7 @@ import sys
 from pathlib import Path
 
 import pytest
+
 from tests.studies import PYTHON_ENVIRONMENT, TEMPLATE
 
 LIBRARY = TEMPLATE / "epochtest"

@@ -12,11 +12,11 @@ from pathlib import Path
 
 import nbformat
 import pytest
-from tests.studies import REPOSITORY
-
 from epochtest.errors import EpochtestError
 from epochtest.pipeline.html import write_report
 from epochtest.study.results import CAUTION
+
+from tests.studies import REPOSITORY
 
 REPORT = REPOSITORY / "example_rendered" / "runs" / "report.html"
 VOID = {"meta", "br", "hr", "img", "input", "link"}

@@ -15,13 +15,13 @@ import sys
 from pathlib import Path
 
 import pytest
-from tests.studies import PYTHON_ENVIRONMENT, command, small_study, tree, write_claim
-
 from epochtest.errors import BusyError, ChangedInputError, ProtocolError
 from epochtest.pipeline.run import claim_results, run
 from epochtest.pipeline.store import Store
 from epochtest.study.load import load_study
 from epochtest.study.results import CAUTION
+
+from tests.studies import PYTHON_ENVIRONMENT, command, small_study, tree, write_claim
 
 ALL_STEPS = {
     "1_catalog",

@@ -14,13 +14,13 @@ from pathlib import Path
 import jsonschema
 import numpy as np
 import pytest
-from tests.studies import FULL_MOON, TEMPLATE, VENUS, small_study, write_claim
-
 from epochtest.errors import EphemerisSpanError, NotebookError, ProtocolError
 from epochtest.study.claims import TimingClaim
 from epochtest.study.load import load_study
 from epochtest.study.schema import SCHEMAS, schema_text
 from epochtest.study.settings import Selection, Study
+
+from tests.studies import FULL_MOON, TEMPLATE, VENUS, small_study, write_claim
 
 
 def faults(root: Path) -> list[str]:

@@ -64,7 +64,8 @@ def _result() -> ClaimResult:
     )  # fmt: skip
     effect = Effect(
         rate_ratio=1.031, exact_interval=(0.9716, 1.094), inflated_interval=(0.94, None),
-        confidence=0.95, detectable_ratio=1.117, power=0.8,
+        confidence=0.95, detectable_ratio=1.05, detectable_ratio_family=1.117,
+        power=0.8,
     )  # fmt: skip
     test = TestResult(
         claim=_claim(), span_utc=("1990-01-01", "2020-01-01"), n_earthquakes=11815, n_epochs=371,
@@ -151,7 +152,7 @@ def test_html_tables_can_be_read_aloud() -> None:
     cells.feed(tables.html(frame, 'Findings "all"')._repr_html_())
     heads = [attrs for tag, attrs in cells.found if tag == "th"]
     assert [tag for tag, _ in cells.found].count("caption") == 1
-    assert [head["scope"] for head in heads] == ["col"] * 11 + ["row"]
+    assert [head["scope"] for head in heads] == ["col"] * 10 + ["row"]
     assert "Full <Moon> & arc" in cells.text
     assert "moon" not in [tag for tag, _ in cells.found]
 
@@ -162,7 +163,7 @@ def test_numbers_stand_flush_right_and_words_left() -> None:
     cells = _Cells()
     cells.feed(tables.html(frame, "x")._repr_html_())
     sides = [a["style"].split(";")[0] for t, a in cells.found if t == "th" and a["scope"] == "col"]
-    assert sides == ["text-align:left"] * 3 + ["text-align:right"] * 8
+    assert sides == ["text-align:left"] * 2 + ["text-align:right"] * 8
     plain = tables.html(pd.DataFrame({"a": ["x"], "n < 2": [1]}), "x")._repr_html_()
     assert plain.count("text-align:right") == 2
     assert ">n &lt; 2</th>" in plain
@@ -245,18 +246,21 @@ def test_base_rates_and_nulls_show_what_chance_gives() -> None:
 
 
 def test_the_terminal_table_ends_with_the_caution() -> None:
-    """The command line carries the findings and the caution; markup in a title stays text."""
-    result = _result()
-    odd = result.model_copy(
-        update={
-            "test": result.test.model_copy(
-                update={"claim": result.test.claim.model_copy(update={"title": "A [bold]title[/]"})}
-            )
-        }
-    )
+    """The command line carries the claims by id, the findings and the caution."""
     out = io.StringIO()
-    Console(file=out, width=300).print(tables.findings_text([odd]))
+    Console(file=out, width=120).print(tables.findings_text([_result()]))
     text = out.getvalue()
-    assert "A [bold]title[/]" in text
+    assert "full-moon" in text
     assert "none detected" in text
     assert " ".join(CAUTION.split()) in " ".join(text.split())
+
+
+def test_findings_for_programs_are_plain_numbers() -> None:
+    """The CSV of findings has one row per claim, raw numbers, and blanks where unbounded."""
+    (row,) = tables.findings_numbers([_result()]).to_dict("records")
+    assert row["claim"] == "full-moon"
+    assert row["p_used"] == 0.00004
+    assert row["p_circular-shift"] == 0.2604
+    assert row["detectable_ratio_family"] == 1.117
+    assert row["inflated_high"] is None
+    assert row["hits"] == 1234

@@ -8,6 +8,7 @@ import warnings
 from pathlib import Path
 
 import nbformat
+
 from tests.studies import command, small_study
 
 REPEATS = 5
@@ -28,7 +29,6 @@ def main() -> None:
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
         import papermill
-
         from epochtest.pipeline.execute import execute
 
         with tempfile.TemporaryDirectory() as scratch:

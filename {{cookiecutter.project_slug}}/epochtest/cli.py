@@ -19,6 +19,8 @@ from epochtest.errors import EpochtestError
 from epochtest.study.load import LoadedStudy, load_study, study_root
 from epochtest.study.results import CAUTION
 
+PLAIN_WIDTH = 120
+
 
 @contextmanager
 def plain_errors() -> Iterator[None]:
@@ -86,9 +88,7 @@ def run(claims: tuple[str, ...], workers: int | None) -> None:
         if outcome.reported:
             show_findings(study)
         elif not outcome.failed:
-            click.echo(
-                "The report follows when every claim has been run: `python -m epochtest run`."
-            )
+            click.echo("The report follows when every claim is run: `python -m epochtest run`.")
         if outcome.failed:
             sys.exit(1)
 
@@ -129,9 +129,9 @@ def show_findings(study: LoadedStudy) -> None:
 
     from epochtest.tables.findings import findings_text
 
-    Console().print(findings_text(results))
+    console = Console() if sys.stdout.isatty() else Console(width=PLAIN_WIDTH)
+    console.print(findings_text(results))
     click.echo("Report: runs/report.html")
-    click.echo(CAUTION)
 
 
 @contextmanager

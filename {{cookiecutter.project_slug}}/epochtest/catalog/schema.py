@@ -8,8 +8,8 @@ import pandas as pd
 import pyarrow as pa
 import pyarrow.parquet as pq
 
-from epochtest.catalog.files import write_whole
 from epochtest.errors import CatalogError, MissingArtifactError
+from epochtest.files import write_whole
 
 COLUMNS: dict[str, tuple[str, str]] = {
     "event_id": ("str", "string"),

@@ -9,8 +9,8 @@ from pathlib import Path
 import tomli_w
 from pydantic import ValidationError
 
-from epochtest.catalog.files import sha256_of, write_whole
 from epochtest.errors import CatalogError, ChangedInputError, ProtocolError
+from epochtest.files import sha256_of, write_whole
 from epochtest.study.base import faults_of
 from epochtest.study.settings import Source, Sources
 

@@ -53,7 +53,7 @@ def effect_rows(results: Iterable[ClaimResult]) -> list[EffectRow]:
             ratio=result.test.effect.rate_ratio,
             exact=result.test.effect.exact_interval,
             inflated=result.test.effect.inflated_interval,
-            detectable=result.test.effect.detectable_ratio,
+            detectable=result.test.effect.detectable_ratio_family,
             asserted=result.test.claim.asserted_rate_ratio,
             finding=result.finding,
         )

@@ -3,9 +3,7 @@
 from __future__ import annotations
 
 import hashlib
-import os
 import re
-import tempfile
 from dataclasses import dataclass
 from html import escape
 from pathlib import Path
@@ -15,6 +13,7 @@ import altair
 import vl_convert
 
 from epochtest.charts import style
+from epochtest.files import write_whole
 
 _TAG = re.compile(r"<[^>]*>")
 _LONG_DECIMAL = re.compile(r"-?\d+\.\d{3,}(?:e-?\d+)?")
@@ -68,7 +67,8 @@ class Figure:
         """Write the SVG with its title and description inside; returns the path."""
         words = f"<title>{escape(self.title)}</title><desc>{escape(self.alt)}</desc>"
         head, tail = self.svg.split(">", 1)
-        return _write(Path(path), f"{head}>{words}{tail}".encode())
+        write_whole(Path(path), f"{head}>{words}{tail}".encode())
+        return Path(path)
 
     def save_png(self, path: str | Path, *, scale: float = 2.0, dark: bool = False) -> Path:
         """Write a PNG on a white (or near-black) page, for looking at; returns the path."""
@@ -76,7 +76,8 @@ class Figure:
         svg = re.sub(r' style="[^"]*"', "", self.svg, count=1).replace("currentColor", ink)
         head, tail = svg.split(">", 1)
         sheet = f'<rect width="100%" height="100%" fill="{page}"/>'
-        return _write(Path(path), vl_convert.svg_to_png(f"{head}>{sheet}{tail}", scale=scale))
+        write_whole(Path(path), vl_convert.svg_to_png(f"{head}>{sheet}{tail}", scale=scale))
+        return Path(path)
 
 
 def _tidy(svg: str) -> str:
@@ -106,17 +107,3 @@ def _rename(svg: str, old: str, new: str) -> str:
     for form in ('id="{}"', "url(#{})", 'href="#{}"'):
         svg = svg.replace(form.format(old), form.format(new))
     return svg
-
-
-def _write(path: Path, content: bytes) -> Path:
-    """Whole or not at all: beside the target first, then in its place."""
-    handle, temporary = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
-    try:
-        with os.fdopen(handle, "wb") as file:
-            file.write(content)
-        os.chmod(temporary, 0o644)
-        os.replace(temporary, path)
-    except BaseException:
-        Path(temporary).unlink(missing_ok=True)
-        raise
-    return path

@@ -8,7 +8,7 @@ from pathlib import Path
 
 from epochtest.catalog.sources import append_source
 from epochtest.errors import CatalogError, ProtocolError
-from epochtest.pipeline.hashing import file_sha256
+from epochtest.files import sha256_of
 from epochtest.study.settings import Source
 
 
@@ -28,7 +28,7 @@ def add_catalogs(root: Path, files: tuple[Path, ...], origin: str, licence: str)
             faults.append(f"{file}: no such file; check the name.")
         elif target in targets.values():
             faults.append(f"{file}: two files are named {file.name}; rename one.")
-        elif target.exists() and file_sha256(target) != file_sha256(file):
+        elif target.exists() and sha256_of(target) != sha256_of(file):
             faults.append(
                 f"{file}: catalogs/{file.name} exists with other content and is never "
                 "overwritten; rename the new file."
@@ -43,7 +43,7 @@ def add_catalogs(root: Path, files: tuple[Path, ...], origin: str, licence: str)
             shutil.copyfile(file, partial)
             os.replace(partial, target)
         name = f"catalogs/{target.name}"
-        source = Source(file=name, origin=origin, licence=licence, sha256=file_sha256(target))
+        source = Source(file=name, origin=origin, licence=licence, sha256=sha256_of(target))
         append_source(root, source)
         names.append(name)
     return names

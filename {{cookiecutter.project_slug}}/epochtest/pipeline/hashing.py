@@ -10,6 +10,8 @@ from importlib import metadata
 from pathlib import Path
 from typing import Any
 
+from epochtest.files import sha256_of
+
 KEY_LENGTH = 16
 # The packages whose version can change a number or a picture.
 PACKAGES = (
@@ -28,12 +30,6 @@ PACKAGES = (
     "vl-convert-python",
 )
 SIGNIFICANT_DIGITS = 12
-
-
-def file_sha256(path: Path) -> str:
-    """SHA-256 of a file, read in pieces."""
-    with path.open("rb") as stream:
-        return hashlib.file_digest(stream, "sha256").hexdigest()
 
 
 def rounded(value: Any) -> Any:
@@ -70,7 +66,7 @@ def library_sha256() -> str:
     for path in sorted(folder.rglob("*"), key=lambda path: path.relative_to(folder).as_posix()):
         if path.is_file() and "__pycache__" not in path.parts:
             digest.update(path.relative_to(folder).as_posix().encode() + b"\0")
-            digest.update(file_sha256(path).encode() + b"\n")
+            digest.update(sha256_of(path).encode() + b"\n")
     return digest.hexdigest()
 
 

@@ -8,7 +8,7 @@ from pathlib import Path
 import nbformat
 
 from epochtest.errors import EpochtestError
-from epochtest.pipeline.store import write_atomically
+from epochtest.files import write_whole
 
 TEMPLATE_FOLDER = Path(__file__).resolve().parent
 TEMPLATE = "report_template"
@@ -37,7 +37,7 @@ def write_report(notebook: Path, output: Path) -> None:
                 f"report: the page contains {forbidden!r}, which a page read without a network "
                 "must not; remove it from the notebook's output."
             )
-    write_atomically(output, page)
+    write_whole(output, page.encode())
 
 
 def _title(notebook: nbformat.NotebookNode) -> str:

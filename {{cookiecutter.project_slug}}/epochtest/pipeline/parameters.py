@@ -43,8 +43,8 @@ class ReportParameters(Strict):
     """4_report; empty folders mean the newest artifacts of the study."""
 
     catalog_artifact: str = ""
-    epochs_artifacts: dict[str, str] = {}
-    test_artifacts: dict[str, str] = {}
+    epochs_artifacts: dict[str, str] = Field(default_factory=dict)
+    test_artifacts: dict[str, str] = Field(default_factory=dict)
     output: str = ""
 
 

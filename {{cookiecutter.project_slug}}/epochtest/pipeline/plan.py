@@ -19,7 +19,8 @@ from functools import cached_property
 from typing import Any
 
 from epochtest.catalog.sources import verify_sources
-from epochtest.pipeline.hashing import file_sha256, key_of, library_sha256, package_versions
+from epochtest.files import sha256_of
+from epochtest.pipeline.hashing import key_of, library_sha256, package_versions
 from epochtest.pipeline.store import Slot
 from epochtest.study.claims import Claim, ListedDates
 from epochtest.study.load import LoadedStudy
@@ -62,7 +63,7 @@ class Plan:
         needs: tuple[str, ...] = (),
     ) -> Step:
         everything = {
-            "notebook": file_sha256(self.study.root / "notebooks" / f"{notebook}.ipynb"),
+            "notebook": sha256_of(self.study.root / "notebooks" / f"{notebook}.ipynb"),
             "library": library_sha256(),
             "packages": package_versions(),
             **ingredients,
@@ -72,7 +73,7 @@ class Plan:
 
     def _file_hash(self, name: str) -> str:
         path = self.study.root / name
-        return file_sha256(path) if path.is_file() else "missing"
+        return sha256_of(path) if path.is_file() else "missing"
 
     @cached_property
     def catalog(self) -> Step:

@@ -15,6 +15,7 @@ import numpy as np
 
 from epochtest import __version__, charts, tables
 from epochtest.errors import MissingArtifactError
+from epochtest.files import sha256_of
 from epochtest.inference.finding import decide, sentence
 from epochtest.inference.multiplicity import adjust_family
 from epochtest.inference.superposed import with_family
@@ -22,7 +23,7 @@ from epochtest.pipeline import catalog_step, epochs_step
 from epochtest.pipeline.block import Block, heading, link, paragraph, quotation, stacked
 from epochtest.pipeline.catalog_step import CatalogStep
 from epochtest.pipeline.frames import artifact_folder, output_folder, read_result, result_text
-from epochtest.pipeline.hashing import file_sha256, library_sha256, package_versions
+from epochtest.pipeline.hashing import library_sha256, package_versions
 from epochtest.pipeline.store import RESULT
 from epochtest.pipeline.superposed_step import SuperposedStep, tested
 from epochtest.study.load import LoadedStudy, load_study
@@ -156,11 +157,11 @@ class ReportStep:
         facts: dict[str, object] = {
             "epochtest": __version__,
             "library SHA-256": library_sha256(),
-            "study.toml SHA-256": file_sha256(self.study.root / "study.toml"),
+            "study.toml SHA-256": sha256_of(self.study.root / "study.toml"),
         }
         for claim in self.study.claims:
             name = f"claims/{claim.id}.toml"
-            facts[f"{name} SHA-256"] = file_sha256(self.study.root / name)
+            facts[f"{name} SHA-256"] = sha256_of(self.study.root / name)
         for file in self.catalog.result.files:
             facts[f"{file.file} SHA-256"] = file.sha256
         facts["seed"] = self.study.settings.inference.seed
@@ -177,8 +178,10 @@ class ReportStep:
         for result in self.results:
             path = folder / "results" / f"{result.test.claim.id}.json"
             path.write_text(result_text(result), encoding="utf-8", newline="\n")
-        table = tables.findings_table(self.results)
-        table.to_csv(folder / "findings.csv", index=False, lineterminator="\n", encoding="utf-8")
+        table = tables.findings_numbers(self.results)
+        table.to_csv(
+            folder / "findings.csv", index=False, lineterminator="\n", float_format="%.12g"
+        )
         return f"{len(self.results)} findings written."
 
 

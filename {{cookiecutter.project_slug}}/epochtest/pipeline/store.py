@@ -18,19 +18,11 @@ from pathlib import Path
 from typing import IO, Any
 
 from epochtest.errors import BusyError, MissingArtifactError
-from epochtest.pipeline.hashing import file_sha256
+from epochtest.files import sha256_of, write_whole
 
 MANIFEST = "manifest.json"
 RESULT = "result.json"
 NOTEBOOK = "notebook.ipynb"
-
-
-def write_atomically(path: Path, text: str) -> None:
-    """Write text to a neighbour file, then rename it over ``path``."""
-    path.parent.mkdir(parents=True, exist_ok=True)
-    partial = path.with_name(f".{path.name}.partial")
-    partial.write_text(text, encoding="utf-8", newline="\n")
-    os.replace(partial, path)
 
 
 @dataclass(frozen=True)
@@ -72,7 +64,7 @@ class Store:
             present = {p.relative_to(folder).as_posix() for p in folder.rglob("*") if p.is_file()}
             if present - {MANIFEST} != set(files):
                 return False
-            return all(file_sha256(folder / name) == sha for name, sha in files.items())
+            return all(sha256_of(folder / name) == sha for name, sha in files.items())
         except (OSError, ValueError, KeyError):
             return False
 
@@ -87,7 +79,7 @@ class Store:
         """Add the manifest and move the finished folder into place."""
         partial, final = self.root / slot.partial, self.root / slot.folder
         files = {
-            path.relative_to(partial).as_posix(): file_sha256(path)
+            path.relative_to(partial).as_posix(): sha256_of(path)
             for path in sorted(partial.rglob("*"))
             if path.is_file()
         }
@@ -98,9 +90,8 @@ class Store:
             "made_from": ingredients,
             "files": files,
         }
-        write_atomically(
-            partial / MANIFEST, json.dumps(manifest, indent=1, ensure_ascii=False) + "\n"
-        )
+        text = json.dumps(manifest, indent=1, ensure_ascii=False) + "\n"
+        write_whole(partial / MANIFEST, text.encode())
         final.parent.mkdir(parents=True, exist_ok=True)
         shutil.rmtree(final, ignore_errors=True)
         os.replace(partial, final)
@@ -128,7 +119,7 @@ class Store:
     def write_current(self, slots: list[Slot]) -> None:
         """Note which artifact of every step belongs to the study as it stands."""
         table = {slot.step: slot.folder for slot in sorted(slots, key=lambda slot: slot.step)}
-        write_atomically(self.runs / "current.json", json.dumps(table, indent=1) + "\n")
+        write_whole(self.runs / "current.json", (json.dumps(table, indent=1) + "\n").encode())
 
     def current(self, step: str) -> Path:
         """Folder of the newest artifact of a step; MissingArtifactError if none was made."""

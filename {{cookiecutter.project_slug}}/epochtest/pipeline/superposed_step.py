@@ -76,7 +76,7 @@ class SuperposedStep:
 
     def numbers(self) -> tables.HtmlTable:
         """Hits, rate ratio and intervals, before the family of claims is paid for."""
-        return tables.html(tables.test_table(self.result), "The test in numbers")
+        return tables.html(tables.test_table(self.result, None), "The test in numbers")
 
     def notes(self) -> Block:
         """What limits this test."""

@@ -84,8 +84,8 @@ class CatalogSettings(Strict):
     keep_event_types: tuple[str, ...] = Field(
         ("earthquake",), description="Other event types are set aside; rows without a type stay."
     )
-    duplicate_seconds: float = Field(16.0, ge=0.0)
-    duplicate_km: float = Field(100.0, ge=0.0)
+    duplicate_seconds: float = Field(2.0, ge=0.0)
+    duplicate_km: float = Field(50.0, ge=0.0)
     duplicate_magnitude: float = Field(0.5, ge=0.0)
 
     @field_validator("files")

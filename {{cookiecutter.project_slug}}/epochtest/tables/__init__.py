@@ -1,7 +1,12 @@
 """Report tables from result objects: frames of text, HTML with captions, terminal tables."""
 
 from epochtest.tables.claim import test_table
-from epochtest.tables.findings import findings_table, findings_text, nulls_table
+from epochtest.tables.findings import (
+    findings_numbers,
+    findings_table,
+    findings_text,
+    nulls_table,
+)
 from epochtest.tables.html import HtmlTable, html
 from epochtest.tables.inputs import (
     base_rates_table,
@@ -18,6 +23,7 @@ __all__ = [
     "decided_before",
     "epochs_table",
     "files_table",
+    "findings_numbers",
     "findings_table",
     "findings_text",
     "html",

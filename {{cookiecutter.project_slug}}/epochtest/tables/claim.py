@@ -9,8 +9,8 @@ from epochtest.tables import numbers
 from epochtest.tables.html import numeric
 
 
-def test_table(result: TestResult, family: FamilyAdjustment | None = None) -> pd.DataFrame:
-    """One row per number; with ``family``, also what the study's other claims cost this one."""
+def test_table(result: TestResult, family: FamilyAdjustment | None) -> pd.DataFrame:
+    """One row per number; ``family`` is what the study's other claims cost, None before that."""
     effect = result.effect
     level = numbers.percent(effect.confidence, 0)
     rows = [

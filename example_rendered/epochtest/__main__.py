@@ -1,0 +1,6 @@
+"""``python -m epochtest``."""
+
+from epochtest.cli import main
+
+if __name__ == "__main__":
+    main()

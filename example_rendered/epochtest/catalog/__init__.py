@@ -1,0 +1,1 @@
+"""Earthquake catalogs: read, clean, select, describe. Knows nothing of the sky."""

@@ -1,0 +1,1 @@
+"""Windows, counts, nulls, effects, power and multiplicity."""

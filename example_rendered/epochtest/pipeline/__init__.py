@@ -1,0 +1,1 @@
+"""Steps, notebooks, artifacts and the report."""

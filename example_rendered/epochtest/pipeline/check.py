@@ -1,0 +1,114 @@
+"""``check``: everything is read and opened, what each claim will do is said, no outcome is seen.
+
+Shown per claim: its event in words, the number of epochs, the coverage of its windows and the
+number of earthquakes that its selection admits over the whole span. How many of them lie in
+windows is an outcome and is not computed here.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+from epochtest.errors import EpochtestError
+from epochtest.pipeline.catalog_step import CatalogStep, catalog_of
+from epochtest.pipeline.epochs_step import epochs_of
+from epochtest.pipeline.parameters import PARAMETERS, declared_names
+from epochtest.pipeline.superposed_step import selected_earthquakes
+from epochtest.study.claims import Claim
+from epochtest.study.load import LoadedStudy
+from epochtest.tables import numbers
+from epochtest.tables.protocol import selection_in_words, window_in_words
+
+
+@dataclass
+class CheckReport:
+    """Lines to print; ``faults`` stop a run, ``warnings`` do not."""
+
+    lines: list[str] = field(default_factory=list)
+    warnings: list[str] = field(default_factory=list)
+    faults: list[str] = field(default_factory=list)
+
+
+def check_study(study: LoadedStudy) -> CheckReport:
+    """Look at every input of ``study`` and at no outcome."""
+    report = CheckReport()
+    settings = study.settings
+    report.lines.append(
+        f"{settings.about.title}: {settings.span.start} to {settings.span.end} UTC, "
+        f"{settings.ephemeris.kernel}, alpha {settings.inference.alpha:g}, "
+        f"correction {settings.inference.correction}, {len(study.claims)} claims."
+    )
+    for stem in PARAMETERS:
+        path = study.root / "notebooks" / f"{stem}.ipynb"
+        if not path.is_file():
+            report.faults.append(f"notebooks/{path.name}: the notebook is missing; restore it.")
+        else:
+            _guarded(report, lambda path=path: declared_names(path))
+    catalog = _guarded(report, lambda: catalog_of(study))
+    if isinstance(catalog, CatalogStep):
+        _describe_catalog(report, catalog)
+    for claim in study.claims:
+        _describe_claim(report, study, claim, catalog)
+    return report
+
+
+def _guarded(report: CheckReport, work):  # type: ignore[no-untyped-def]
+    """The result of ``work``, or None with its fault noted."""
+    try:
+        return work()
+    except EpochtestError as error:
+        report.faults.append(str(error))
+        return None
+
+
+def _describe_catalog(report: CheckReport, catalog: CatalogStep) -> None:
+    result = catalog.result
+    mc = "unknown" if result.sizes.mc is None else f"{result.sizes.mc:.2f}"
+    report.lines.append(
+        f"Catalog: {numbers.count(result.rows_read)} rows read = "
+        f"{numbers.count(result.kept)} kept + {numbers.count(result.quarantined)} set aside; "
+        f"{numbers.count(result.in_span)} in the span; completeness about {mc}."
+    )
+    report.warnings.extend(result.notes)
+
+
+def _describe_claim(
+    report: CheckReport, study: LoadedStudy, claim: Claim, catalog: CatalogStep | None
+) -> None:
+    step = _guarded(report, lambda: epochs_of(study, claim))
+    if step is None:
+        return
+    result = step.result
+    selection = study.selection_of(claim)
+    report.lines += [
+        f"{claim.id}: {claim.title}",
+        f"  event      {result.description}",
+        f"  window     {window_in_words(claim.window_days)}, direction {claim.direction}",
+        f"  epochs     {numbers.count(result.n_epochs)} "
+        f"({result.overlapping_windows} windows overlap the one before)",
+        f"  coverage   {numbers.percent(result.coverage)} of the span",
+        f"  selection  {selection_in_words(selection)}",
+    ]
+    report.warnings += [f"{claim.id}: {note}" for note in result.notes]
+    if result.n_epochs < claim.minimum.epochs:
+        report.warnings.append(
+            f"{claim.id}: {result.n_epochs} epochs are fewer than its own minimum of "
+            f"{claim.minimum.epochs}; the finding will be 'cannot tell'."
+        )
+    if catalog is None:
+        return
+    selected = _guarded(report, lambda: selected_earthquakes(study, claim, catalog.kept))
+    if selected is None:
+        return
+    report.lines.append(f"  selected   {numbers.count(len(selected))} earthquakes in the span")
+    if len(selected) < claim.minimum.earthquakes:
+        report.warnings.append(
+            f"{claim.id}: {len(selected)} earthquakes are fewer than its own minimum of "
+            f"{claim.minimum.earthquakes}; the finding will be 'cannot tell'."
+        )
+    mc, floor = catalog.result.sizes.mc, selection.minimum_magnitude
+    if mc is not None and (floor is None or floor < mc):
+        report.warnings.append(
+            f"{claim.id}: its magnitude floor ({'none' if floor is None else f'{floor:g}'}) is "
+            f"below the completeness of the catalog (about {mc:.2f})."
+        )

@@ -1,0 +1,1 @@
+"""Instants of sky events from SPK kernels. Knows nothing of earthquakes."""

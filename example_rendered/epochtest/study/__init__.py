@@ -1,0 +1,1 @@
+"""What a study says of itself: protocol files in, versioned results out (pydantic models)."""

@@ -1,0 +1,136 @@
+"""What was decided beforehand, in words a reader needs no TOML for."""
+
+from __future__ import annotations
+
+import pandas as pd
+
+from epochtest.study.claims import (
+    ListedDates,
+    LongitudeDifference,
+    MoonDistance,
+    MoonPhase,
+    SkyEvent,
+    TimingClaim,
+)
+from epochtest.study.settings import Selection, Study
+from epochtest.tables import numbers
+
+_FRAME = {
+    "geometric-J2000": "geometric directions, J2000 ecliptic",
+    "apparent-of-date": "apparent directions, ecliptic of date",
+}
+_DIRECTION = {
+    "more": "more earthquakes inside the windows than outside (one-sided)",
+    "fewer": "fewer earthquakes inside the windows than outside (one-sided)",
+    "either": "more or fewer earthquakes inside the windows (two-sided)",
+}
+_NULL = {
+    "circular-shift": "circular shift: all epochs moved together through the span, which keeps "
+    "the clustering of the earthquakes and the spacing of the epochs"
+}
+_CORRECTION = {
+    "maxT": "Westfall-Young maxT over all claims of the study",
+    "holm": "Holm's step-down over all claims of the study",
+    "none": "none: each claim is tested as if it were the only one",
+}
+
+
+def event_in_words(event: SkyEvent) -> str:
+    """The sky event of a claim as a phrase with its frame."""
+    match event:
+        case MoonPhase():
+            named = [f"{phase.replace('-', ' ')} Moon" for phase in event.phases]
+            angles = [f"Moon {numbers.days(a)}° east of the Sun" for a in event.elongations_deg]
+            return f"{' or '.join(named + angles)} ({_FRAME[event.frame]})"
+        case MoonDistance():
+            side = "nearest to" if event.extreme == "perigee" else "farthest from"
+            return f"Moon {side} the Earth ({event.extreme})"
+        case LongitudeDifference():
+            first, second = (_body(body) for body in event.bodies)
+            what = event.aspect or " or ".join(f"{numbers.days(a)}°" for a in event.angles_deg())
+            noun = what if event.aspect else f"difference of ecliptic longitude {what}"
+            seen = f"{noun} of {first} and {second} seen from {_body(event.centre)}"
+            return f"{seen} ({_FRAME[event.frame]})"
+        case ListedDates():
+            return f"dates listed in {event.file}, column {event.column}"
+
+
+def selection_in_words(selection: Selection) -> str:
+    """Which earthquakes count, as a phrase."""
+    parts = [
+        _limits("magnitude", "", selection.minimum_magnitude, selection.maximum_magnitude),
+        _limits("depth", " km", selection.minimum_depth_km, selection.maximum_depth_km),
+    ]
+    if selection.box is not None:
+        west, south, east, north = selection.box
+        parts.append(
+            f"longitude {_degrees(west, 'E', 'W')} to {_degrees(east, 'E', 'W')}, "
+            f"latitude {_degrees(south, 'N', 'S')} to {_degrees(north, 'N', 'S')}"
+        )
+    if selection.polygon is not None:
+        parts.append(f"inside the polygon of {selection.polygon}")
+    said = [part for part in parts if part]
+    return "; ".join(said) if said else "every earthquake of the catalog"
+
+
+def window_in_words(window_days: tuple[float, float]) -> str:
+    """A window as a phrase: "0 to 3 days after the epoch"."""
+    first, last = window_days
+    if first >= 0.0:
+        return f"{numbers.days(first)} to {numbers.days(last)} days after the epoch"
+    if last <= 0.0:
+        return f"{numbers.days(-last)} to {numbers.days(-first)} days before the epoch"
+    return (
+        f"{numbers.days(-first)} days before to {numbers.days(last)} days after the epoch"
+    )  # fmt: skip
+
+
+def decided_before(claim: TimingClaim, study: Study) -> pd.DataFrame:
+    """Everything about ``claim`` that was fixed before outcomes were seen, one row each."""
+    inference = study.inference
+    asserted = (
+        "none asserted"
+        if claim.asserted_rate_ratio is None
+        else numbers.ratio(claim.asserted_rate_ratio)
+    )
+    rows = [
+        ("Claim", claim.statement),
+        ("Asserted by", claim.asserted_by or "not said"),
+        ("Sky event", event_in_words(claim.event)),
+        ("Ephemeris", study.ephemeris.kernel),
+        ("Window", window_in_words(claim.window_days)),
+        ("Direction", _DIRECTION[claim.direction]),
+        ("Span", f"{study.span.start} to {study.span.end} (UTC, end not included)"),
+        ("Earthquakes", selection_in_words(study.selection.overridden_by(claim.selection))),
+        ("Nulls", "; ".join(_NULL[name] for name in claim.nulls)),
+        ("Alpha", f"{inference.alpha:g}"),
+        ("Price of several claims", _CORRECTION[inference.correction]),
+        ("Asserted rate ratio", asserted),
+        ("Power of the detectable ratio", numbers.percent(inference.power, 0)),
+        (
+            "Least counts",
+            f"{numbers.count(claim.minimum.epochs)} epochs and "
+            f"{numbers.count(claim.minimum.earthquakes)} earthquakes; with fewer: cannot tell",
+        ),
+    ]
+    return pd.DataFrame(rows, columns=["What", "Decided beforehand"], dtype=object)
+
+
+def _body(body: str) -> str:
+    return f"the {body.capitalize()}" if body in ("sun", "moon", "earth") else body.capitalize()
+
+
+def _limits(what: str, unit: str, low: float | None, high: float | None) -> str:
+    if low is None and high is None:
+        return ""
+    if high is None:
+        return f"{what} {low:g}{unit} or more"
+    if low is None:
+        return f"{what} {high:g}{unit} or less"
+    return f"{what} {low:g} to {high:g}{unit}"
+
+
+def _degrees(value: float, positive: str, negative: str) -> str:
+    wrapped = (value + 180.0) % 360.0 - 180.0 if positive == "E" else value
+    side = "" if wrapped in (0.0, -180.0) else positive if wrapped > 0 else negative
+    return f"{abs(wrapped):g}°{side}"

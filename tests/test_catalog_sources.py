@@ -6,7 +6,7 @@ import tomllib
 from pathlib import Path
 
 import pytest
-from epochtest.catalog import files as files_module
+from epochtest import files as files_module
 from epochtest.catalog.sources import SOURCES_FILE, append_source, verify_sources
 from epochtest.errors import CatalogError, ChangedInputError, ProtocolError
 from epochtest.files import sha256_of, write_whole

@@ -44,6 +44,13 @@ def add_catalogs(root: Path, files: tuple[Path, ...], origin: str, licence: str)
             os.replace(partial, target)
         name = f"catalogs/{target.name}"
         source = Source(file=name, origin=origin, licence=licence, sha256=sha256_of(target))
-        append_source(root, source)
+        described = append_source(root, source)
+        if described != source:
+            raise ProtocolError.of(
+                [
+                    f"{name}: is already in the study, with the origin {described.origin!r}; "
+                    "to change the words, edit catalogs/sources.toml."
+                ]
+            )
         names.append(name)
     return names

@@ -14,7 +14,7 @@ from epochtest.pipeline.block import Block, paragraph, stacked
 from epochtest.pipeline.frames import artifact_folder, output_folder, read_result, result_text
 from epochtest.pipeline.store import RESULT
 from epochtest.sky.ephemeris import open_ephemeris
-from epochtest.sky.events import clip_to_kernel, describe, find_epochs
+from epochtest.sky.events import clip_to_kernel, describe, find_epochs, require_covered
 from epochtest.sky.listed import read_listed
 from epochtest.study.claims import Claim, ListedDates
 from epochtest.study.load import LoadedStudy, load_study
@@ -88,6 +88,7 @@ def epochs_of(study: LoadedStudy, claim: Claim) -> EpochsStep:
         description = f"dates listed in {claim.event.file}"
     else:
         ephemeris = open_ephemeris(study.settings.ephemeris.kernel)
+        require_covered(ephemeris, *span)
         start, end, clipped = clip_to_kernel(ephemeris, *wanted)
         if clipped:
             notes.append(

@@ -104,7 +104,7 @@ def find_epochs(
     Raises EphemerisSpanError if the span leaves the kernel; see `clip_to_kernel`.
     """
     first_utc, last_utc = (utc_instant(edge) for edge in (from_utc, to_utc))
-    _require_covered(ephemeris, first_utc, last_utc)
+    require_covered(ephemeris, first_utc, last_utc)
     if not first_utc < last_utc:
         none = np.empty(0)
         return epoch_table(utc_from_tdb_days(none), none, [], none, none)
@@ -163,9 +163,10 @@ def epoch_table(
     )
 
 
-def _require_covered(
+def require_covered(
     ephemeris: Ephemeris, first_utc: np.datetime64, last_utc: np.datetime64
 ) -> None:
+    """Raise EphemerisSpanError, naming the covered dates, unless the kernel covers both ends."""
     lowest, highest = ephemeris.covered_utc
     if lowest <= first_utc and last_utc <= highest:
         return

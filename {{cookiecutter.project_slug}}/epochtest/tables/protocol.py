@@ -77,12 +77,14 @@ def window_in_words(window_days: tuple[float, float]) -> str:
     """A window as a phrase: "0 to 3 days after the epoch"."""
     first, last = window_days
     if first >= 0.0:
-        return f"{numbers.days(first)} to {numbers.days(last)} days after the epoch"
+        return f"{numbers.days(first)} to {_days(last)} after the epoch"
     if last <= 0.0:
-        return f"{numbers.days(-last)} to {numbers.days(-first)} days before the epoch"
-    return (
-        f"{numbers.days(-first)} days before to {numbers.days(last)} days after the epoch"
-    )  # fmt: skip
+        return f"{numbers.days(-last)} to {_days(-first)} before the epoch"
+    return f"{_days(-first)} before to {_days(last)} after the epoch"
+
+
+def _days(value: float) -> str:
+    return f"{numbers.days(value)} {'day' if value == 1.0 else 'days'}"
 
 
 def decided_before(claim: TimingClaim, study: Study) -> pd.DataFrame:

@@ -24,7 +24,7 @@ from hypothesis import strategies as st
 SOUND = {
     "event_id": "a", "time": "2011-03-11T05:46:24Z", "latitude": "38.3", "longitude": "142.4",
     "depth": "29", "magnitude": "9.1", "magnitude_type": "mww", "event_type": "earthquake",
-    "updated": "", "fault": "", "source_file": "f.csv",
+    "strike": "", "dip": "", "rake": "", "updated": "", "fault": "", "source_file": "f.csv",
 }  # fmt: skip
 TIGHT = {"duplicate_seconds": 2.0, "duplicate_km": 50.0, "duplicate_magnitude": 0.5}
 
@@ -315,3 +315,23 @@ def test_load_and_summarise(tmp_path: Path) -> None:
         "Too few earthquakes",
     ]:  # fmt: skip
         assert words in notes
+
+
+def test_mechanisms_are_whole_or_absent() -> None:
+    """Strike, dip and rake come together and in range (Aki & Richards 2002), else none of them.
+
+    Rakes 180..360 are the same as -180..0; the earthquake of a broken mechanism stays.
+    """
+    result = clean(
+        raw(
+            {"event_id": "a", "strike": "360", "dip": "30", "rake": "270"},
+            {"event_id": "b", "time": "2011-03-12", "strike": "10", "dip": "95", "rake": "0"},
+            {"event_id": "c", "time": "2011-03-13", "strike": "10", "dip": "", "rake": "0"},
+            {"event_id": "d", "time": "2011-03-14"},
+        ),
+        CatalogSettings(files=("f.csv",)),
+    )
+    kept = result.kept.set_index("event_id")[["strike_deg", "dip_deg", "rake_deg"]]
+    assert kept.loc["a"].tolist() == [0.0, 30.0, -90.0]
+    assert kept.loc[["b", "c", "d"]].isna().all(axis=None)
+    assert result.repairs["incomplete or impossible mechanism dropped"] == 2

@@ -13,8 +13,8 @@ import pytest
 from epochtest.errors import EphemerisSpanError, ProtocolError
 from epochtest.sky.directions import apparent_ecliptic, geometric_ecliptic
 from epochtest.sky.ephemeris import Ephemeris, open_ephemeris
-from epochtest.sky.events import clip_to_kernel, describe, find_epochs
-from epochtest.study.claims import LongitudeDifference, MoonDistance, MoonPhase
+from epochtest.sky.events import clip_to_kernel, find_epochs
+from epochtest.study.events import LongitudeDifference, MoonDistance, MoonPhase
 from epochtest.timescale import J2000_JD
 from skyfield.api import load, load_file
 from skyfield.framelib import ecliptic_frame
@@ -439,15 +439,3 @@ def test_ephemeris_is_opened_once_and_pickles(de421: Ephemeris) -> None:
     """A worker process gets its ephemeris by name, not a copied file handle."""
     assert open_ephemeris("DE421") is de421
     assert pickle.loads(pickle.dumps(de421)) is de421
-
-
-def test_descriptions(de421: Ephemeris) -> None:
-    """The phrase names event, frame and ephemeris."""
-    assert describe(pair("sun", "venus", "earth"), de421) == (
-        "Venus-Earth conjunction seen from the Sun (geometric, J2000 ecliptic, DE421)"
-    )
-    assert describe(MoonDistance(extreme="perigee"), de421) == (
-        "perigee of the Moon (geometric, geocentric, DE421)"
-    )
-    event = MoonPhase(phases=("new", "full"), frame="apparent-of-date")
-    assert describe(event, de421) == "new Moon or full Moon (apparent, ecliptic of date, DE421)"

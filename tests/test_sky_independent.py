@@ -21,7 +21,7 @@ import numpy as np
 import pytest
 from epochtest.sky.ephemeris import open_ephemeris
 from epochtest.sky.events import find_epochs
-from epochtest.study.claims import LongitudeDifference, MoonDistance, MoonPhase
+from epochtest.study.events import LongitudeDifference, MoonDistance, MoonPhase
 from epochtest.timescale import J2000_JD, tdb_minus_tt_s
 from numpy.typing import NDArray
 from pymeeus import Earth, Jupiter, Mars, Mercury, Neptune, Saturn, Uranus, Venus
@@ -136,28 +136,28 @@ def check(
 
 
 def test_random_pairs_against_vsop87() -> None:
-    """Epochs of 14 random planet pairs from random centres, 1901-2050, agree with VSOP87.
+    """Epochs of 60 random planet pairs from random centres, 1901-2050, agree with VSOP87.
 
     VSOP87 against DE440: 1" covers Mercury to Saturn well and Uranus and Neptune, whose
     theories differ by up to 0.9" in this span (common practice: VSOP87 was fit to DE200).
     """
-    assert check(vsop87, random_events(PLANETS, 14, seed=20240317), 1.0, seed=1) >= 40
+    assert check(vsop87, random_events(PLANETS, 60, seed=20240317), 1.0, seed=1) >= 150
 
 
 def test_random_pairs_with_moon_and_pluto_against_astronomy_engine() -> None:
-    """Epochs of 24 random pairs of all eleven bodies from all centres agree within 10".
+    """Epochs of 40 random pairs of all eleven bodies from all centres agree within 10".
 
     10" is about the size of the truncation of astronomy-engine's series (its documentation
     promises 1').
     """
     bodies = [*PLANETS, "moon", "pluto"]
-    events = random_events(bodies, 24, seed=7)
+    events = random_events(bodies, 40, seed=7)
     named = {body for event in events for body in (event.centre, *event.bodies)}
     assert named == set(bodies)
     assert "moon" in {event.centre for event in events}
     # Moon and Earth against each other are told apart in their own test.
     apart = [e for e in events if not {"moon", "earth"} <= {e.centre, *e.bodies}]
-    assert check(truncated, apart, 10.0, seed=2) >= 40
+    assert check(truncated, apart, 10.0, seed=2) >= 70
 
 
 def test_moon_seen_from_the_sun_and_the_earth_from_the_moon() -> None:

@@ -10,7 +10,7 @@ from epochtest.errors import ProtocolError
 from epochtest.sky.ephemeris import open_ephemeris
 from epochtest.sky.events import find_epochs
 from epochtest.sky.listed import read_listed
-from epochtest.study.claims import ListedDates, MoonPhase
+from epochtest.study.events import ListedDates, MoonPhase
 from epochtest.timescale import tdb_days_from_utc
 
 FIRST, LAST = np.datetime64("1900-01-01", "us"), np.datetime64("2050-01-01", "us")

@@ -12,7 +12,7 @@ from epochtest.sky.directions import geometric_vectors, longitude_difference_deg
 from epochtest.sky.ephemeris import open_ephemeris
 from epochtest.sky.events import find_epochs
 from epochtest.sky.search import TOLERANCE_DAYS, find_roots, search_grid, wrap_deg
-from epochtest.study.claims import LongitudeDifference
+from epochtest.study.events import LongitudeDifference
 from epochtest.timescale import J2000_JD, tdb_days_from_utc
 from hypothesis import given, seed, settings
 from hypothesis import strategies as st

@@ -13,7 +13,7 @@ from typing import Any
 import numpy as np
 from epochtest.sky.ephemeris import open_ephemeris
 from epochtest.sky.events import find_epochs
-from epochtest.study.claims import LongitudeDifference, MoonPhase
+from epochtest.study.events import LongitudeDifference, MoonPhase
 from epochtest.timescale import J2000_JD, tdb_days_from_utc
 from skyfield import almanac
 from skyfield.api import load, load_file

@@ -41,8 +41,8 @@ def test_check_looks_at_no_outcome(study: Path, monkeypatch: pytest.MonkeyPatch)
         raise AssertionError("an outcome was looked at")
 
     for module, names in {
-        "superposed": ("exact_hits", "hits_at_all_shifts", "lag_profile", "bin_counts"),
-        "windows": ("exact_hits", "bin_counts"),
+        "superposed": ("hits_by_window", "hits_at_all_shifts", "lag_profile", "bin_counts"),
+        "windows": ("exact_hits", "hits_by_window", "bin_counts"),
     }.items():
         for name in names:
             monkeypatch.setattr(f"epochtest.inference.{module}.{name}", outcome)

@@ -96,7 +96,7 @@ def test_a_stranger_gets_the_same_numbers(maker: ModuleType, fresh: Path) -> Non
 
 
 def test_the_demo_comes_out_as_planted() -> None:
-    """One claim true, two false, one undecidable: the findings say so (the demo's design)."""
+    """One claim true, two false, one undecidable, two wrong about the sky (the demo's design)."""
     findings = {
         path.stem: json.loads(path.read_text(encoding="utf-8"))["finding"]
         for path in (EXAMPLE / "runs/results").iterdir()
@@ -106,4 +106,6 @@ def test_the_demo_comes_out_as_planted() -> None:
         "full-moon": "none detected",
         "moon-perigee": "none detected",
         "mars-opposition": "cannot tell",
+        "great-conjunctions": "disagree",
+        "planet-tides": "disagree",
     }

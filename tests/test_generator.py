@@ -29,7 +29,7 @@ from click import ClickException
 from cookiecutter.exceptions import FailedHookException
 from cookiecutter.main import cookiecutter
 from epochtest.errors import ProtocolError
-from epochtest.study.claims import TimingClaim
+from epochtest.study.claims import ForcingClaim, RecurrenceClaim, TimingClaim
 from epochtest.study.load import load_study
 from epochtest.study.schema import SCHEMAS, schema_text
 from epochtest.study.settings import Study
@@ -91,10 +91,11 @@ def hook(name: str) -> ModuleType:
 
 
 def test_default_answers_give_a_valid_demo_study(bake: Bake) -> None:
-    """Answering nothing gives a study that loads, with four claims and a described catalog."""
+    """Answering nothing gives a study that loads, with its claims and a described catalog."""
     study = load_study(bake())
     assert study.root.name == "tessaline-arc"
-    assert len(study.claims) == 4
+    assert len(study.timing_claims) == 4
+    assert len(study.recurrence_claims) == len(study.forcing_claims) == 1
     assert study.settings.catalog.files == tuple(source.file for source in study.sources.source)
     for source in study.sources.source:
         content = (study.root / source.file).read_bytes()
@@ -133,7 +134,11 @@ def test_self_check_notices_a_changed_catalog(bake: Bake) -> None:
 def test_without_demo_nothing_of_it_stays(bake: Bake) -> None:
     """No demo file, name or claim is left, and loading says which step comes next."""
     folder = bake(project_name="My own", include_demo="no")
-    assert [path.name for path in (folder / "claims").iterdir()] == ["example.toml.txt"]
+    assert sorted(path.name for path in (folder / "claims").iterdir()) == [
+        "example-forcing.toml.txt",
+        "example-recurrence.toml.txt",
+        "example.toml.txt",
+    ]
     assert [path.name for path in (folder / "catalogs").iterdir()] == ["sources.toml"]
     assert toml_of(folder / "catalogs" / "sources.toml") == {}
     assert toml_of(folder / "study.toml")["catalog"]["files"] == ["catalogs/your-catalog.csv"]
@@ -547,7 +552,7 @@ def test_commented_keys_can_be_activated(bake: Bake) -> None:
     """Taking the "# " off each key of study.toml gives keys the model knows, one at a time."""
     lines = (bake() / "study.toml").read_text(encoding="utf-8").splitlines()
     commented = [n for n, line in enumerate(lines) if re.match(r"# [a-z_]+ = ", line)]
-    assert len(commented) == 15
+    assert len(commented) == 18
     for n in commented:
         if lines[n].startswith("# time_of_day"):
             continue  # needs date beside it
@@ -568,7 +573,7 @@ def test_example_claim_shows_every_key_and_is_valid() -> None:
         for name, each in definitions.items()
         if "kind" in each["properties"]
     }
-    assert len(events) == 4
+    assert len(events) == 16
     assert set().union(*events.values()) <= {path[1] for path in shown if path[0] == "event"}
     head = text.split("\n[event]")[0] + "\n"
     kinds = set()
@@ -577,7 +582,22 @@ def test_example_claim_shows_every_key_and_is_valid() -> None:
         plain = re.sub(r"^angle_deg.*\n", "", plain, flags=re.MULTILINE)  # instead of aspect
         claim = TimingClaim.model_validate(tomllib.loads(head + plain))
         kinds.add(claim.event.kind)
-    assert kinds == {"moon-distance", "longitude-difference", "listed"}
+    assert len(kinds) == len(events) - 1  # the active one is a moon-phase
+
+
+@pytest.mark.parametrize(
+    ("name", "model"), [("recurrence", RecurrenceClaim), ("forcing", ForcingClaim)]
+)
+def test_examples_of_sky_claims_show_every_key_and_are_valid(
+    name: str, model: type[RecurrenceClaim] | type[ForcingClaim]
+) -> None:
+    """The examples of the other kinds of claim load and show each key of their models."""
+    text = (TEMPLATE / "claims" / f"example-{name}.toml.txt").read_text(encoding="utf-8")
+    model.model_validate(tomllib.loads(text))
+    shown = shown_keys(text)
+    whole = {("event",), ("selection",), ("asserts",), ("recurrence",)}
+    expected = {path for path in keys_of(model) if path not in whole and path[0] != "selection"}
+    assert expected <= shown.keys()
 
 
 @pytest.mark.parametrize("name", SCHEMAS)
@@ -600,7 +620,7 @@ def test_protocol_files_satisfy_their_schemas(bake: Bake) -> None:
         content = json.loads(json.dumps(toml_of(path), default=str))
         jsonschema.Draft202012Validator(schema).validate(content)
         checked += 1
-    assert checked == 6
+    assert checked == 8
 
 
 def test_version_is_the_same_everywhere() -> None:

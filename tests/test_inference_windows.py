@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from epochtest.errors import ProtocolError
+from epochtest.inference.superposed import test_timing as run_timing
 from epochtest.inference.windows import (
     Grid,
     bin_counts,
@@ -15,6 +16,9 @@ from epochtest.inference.windows import (
     summarise_epochs,
     window_mask,
 )
+from epochtest.study.claims import TimingClaim
+from epochtest.study.events import MoonPhase
+from epochtest.study.settings import InferenceSettings
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -137,3 +141,23 @@ def test_summary_of_an_event_set() -> None:
     # 2 days of the first window, then 8 days of three joined ones, then 3, of 1096 days.
     assert result.coverage == pytest.approx(13 / 1096)
     assert result.searched_from_utc == "2000-01-01T00:00:00Z"
+
+
+def test_a_result_that_rests_on_one_sequence_says_so() -> None:
+    """Forty hits in one window out of fifty are named; fifty spread over fifty windows are not.
+
+    The thresholds (a fifth of all hits, at least ten) are this project's own.
+    """
+    span = (np.datetime64("2000-01-01", "us"), np.datetime64("2010-01-01", "us"))
+    epochs = span[0] + np.arange(30, 3630, 60) * np.timedelta64(1, "D")
+    claim = TimingClaim(
+        id="x", title="x", statement="x", event=MoonPhase(phases=("full",)), window_days=(0.0, 3.0)
+    )
+    hour = np.timedelta64(1, "h")
+    swarm = np.concatenate([epochs[7] + np.arange(1, 41) * hour, epochs[10:20] + hour])
+    spread = epochs[:50] + hour
+    for hits, expected in ((swarm, True), (spread, False)):
+        times = hits
+        result, _ = run_timing(claim, times, epochs, span, InferenceSettings(grid_hours=6.0))
+        assert result.hits == 50
+        assert any("40 of the 50 hits" in text for text in result.warnings) is expected

@@ -69,7 +69,8 @@ def add_cell(root: Path, notebook: str, source: str, position: int) -> None:
 
 def test_run_leaves_results_report_and_caution(executed: Path) -> None:
     """One command makes every artifact, the findings, the report; all carry the caution."""
-    results = claim_results(executed)
+    results, sky = claim_results(executed)
+    assert sky == []
     assert [result.test.claim.id for result in results] == ["full-moon", "venus"]
     for result in results:
         assert result.caution == CAUTION

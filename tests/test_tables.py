@@ -8,7 +8,8 @@ from html.parser import HTMLParser
 import pandas as pd
 import pytest
 from epochtest import tables
-from epochtest.study.claims import LongitudeDifference, MoonPhase, TimingClaim
+from epochtest.study.claims import TimingClaim
+from epochtest.study.events import LongitudeDifference, MoonPhase
 from epochtest.study.results import (
     CAUTION,
     CatalogResult,

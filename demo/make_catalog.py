@@ -29,7 +29,8 @@ sys.path.insert(0, str(STUDY))
 from epochtest.inference.etas import EtasCatalog, EtasParameters, simulate  # noqa: E402
 from epochtest.sky.ephemeris import open_ephemeris  # noqa: E402
 from epochtest.sky.events import find_epochs  # noqa: E402
-from epochtest.study.claims import ListedDates, TimingClaim  # noqa: E402
+from epochtest.study.claims import TimingClaim  # noqa: E402
+from epochtest.study.events import ListedDates  # noqa: E402
 
 Floats = NDArray[np.float64]
 

@@ -23,6 +23,7 @@ DEV = [
     "astronomy-engine>=2.1",
     "astropy>=7",
     "ephem>=4.2",
+    "pysolid>=0.3",
     "hypothesis>=6.100",
     "jsonschema>=4.23",
     "mypy>=1.15",

@@ -122,15 +122,20 @@ def show_findings(study: LoadedStudy) -> None:
     from epochtest.errors import MissingArtifactError
     from epochtest.pipeline.run import claim_results
 
-    results = claim_results(study.root)
-    if not results:
+    tested, sky = claim_results(study.root)
+    if not tested and not sky:
         raise MissingArtifactError("runs/: no report yet; run `python -m epochtest run` first.")
     from rich.console import Console
 
     from epochtest.tables.findings import findings_text
 
     console = Console() if sys.stdout.isatty() else Console(width=PLAIN_WIDTH)
-    console.print(findings_text(results))
+    if tested:
+        console.print(findings_text(tested))
+    for result in sky:
+        click.echo(f"{result.claim.id} ({result.claim.kind}): {result.sentence}")
+    if not tested:
+        click.echo(CAUTION)
     click.echo("Report: runs/report.html")
 
 

@@ -15,7 +15,7 @@ sys.path.insert(0, str(ROOT))
 from epochtest.inference.shift import hits_at_all_shifts  # noqa: E402
 from epochtest.sky.ephemeris import open_ephemeris  # noqa: E402
 from epochtest.sky.events import find_epochs  # noqa: E402
-from epochtest.study.claims import MoonPhase  # noqa: E402
+from epochtest.study.events import MoonPhase  # noqa: E402
 from epochtest.study.load import load_study  # noqa: E402
 from epochtest.timescale import tt_days_from_utc  # noqa: E402
 

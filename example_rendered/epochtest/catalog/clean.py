@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from epochtest.catalog.duplicates import Located, near_duplicates, repeated_ids
 from epochtest.catalog.fields import absent, decimals, text_array, trimmed
 from epochtest.catalog.geometry import signed_longitude_deg
+from epochtest.catalog.mechanism import mechanisms
 from epochtest.catalog.schema import as_schema
 from epochtest.catalog.times import ParsedTimes, parse_times
 from epochtest.errors import CatalogError
@@ -32,6 +33,7 @@ OTHER_TYPE = "event type not kept"
 SAME_ID = "duplicate id"
 REUSED_ID = "id already used by another event"
 NEAR_DUPLICATE = "near duplicate"
+BROKEN_MECHANISM = "incomplete or impossible mechanism dropped"
 REASONS = (
     WRONG_FIELDS, NO_TIME, NO_PLACE, OFF_EARTH, NO_MAGNITUDE, ODD_MAGNITUDE, WILD_MAGNITUDE,
     ODD_DEPTH, WILD_DEPTH, OTHER_TYPE, SAME_ID, REUSED_ID, NEAR_DUPLICATE,
@@ -52,8 +54,8 @@ class Cleaned:
     ``kept`` has the columns of `schema.COLUMNS`, sorted by time, then id. ``quarantined`` has
     QUARANTINE_COLUMNS in file order: ``line`` is a number, the rest is text as it stood in the
     file; ``detail`` is the value found or the id of the row kept instead. ``rows_by_file`` counts
-    the rows read, files in order. ``repairs`` counts the kept rows whose time was re-spelled, by
-    kind.
+    the rows read, files in order. ``repairs`` counts the kept rows whose time was re-spelled or
+    whose broken mechanism was dropped, by kind.
     """
 
     kept: pd.DataFrame
@@ -98,7 +100,8 @@ def clean(raw: pd.DataFrame, settings: CatalogSettings) -> Cleaned:
     text = {name: text_array(raw[name]) for name in raw.columns if name != "source_line"}
     verdicts = _Verdicts(len(raw))
     times = parse_times(text["time"])
-    table = _values(text, raw, times)
+    angles, broken = mechanisms(text)
+    table = _values(text, raw, times, angles)
     for reason, mask, found in _faults(text, table, times, settings):
         verdicts.give_where(reason, mask, found)
     _set_repeats_aside(table, text, settings, verdicts)
@@ -107,7 +110,8 @@ def clean(raw: pd.DataFrame, settings: CatalogSettings) -> Cleaned:
         pa.table({"time": kept["time_utc"].to_numpy(), "id": text_array(kept["event_id"])}),
         sort_keys=[("time", "ascending"), ("id", "ascending")],
     )
-    repairs = {kind: int((mask & verdicts.open).sum()) for kind, mask in times.repaired.items()}
+    changed = {**times.repaired, BROKEN_MECHANISM: broken}
+    repairs = {kind: int((mask & verdicts.open).sum()) for kind, mask in changed.items()}
     cleaned = Cleaned(
         as_schema(kept.iloc[np.asarray(order)]),
         _quarantine(raw, verdicts),
@@ -132,7 +136,12 @@ def check_conservation(cleaned: Cleaned) -> None:
             )  # fmt: skip
 
 
-def _values(text: dict[str, pa.Array], raw: pd.DataFrame, times: ParsedTimes) -> pd.DataFrame:
+def _values(
+    text: dict[str, pa.Array],
+    raw: pd.DataFrame,
+    times: ParsedTimes,
+    angles: NDArray[np.float64],
+) -> pd.DataFrame:
     """Every row as numbers, NaN or NaT where the text gives none."""
     file_and_line = pc.binary_join_element_wise(
         text["source_file"],
@@ -146,6 +155,7 @@ def _values(text: dict[str, pa.Array], raw: pd.DataFrame, times: ParsedTimes) ->
         "event_type": trimmed(text["event_type"]),
         "source_file": text["source_file"],
     }
+    strike, dip, rake = angles
     plain = {name: pd.array(array, dtype="str") for name, array in arrays.items()}
     return pd.DataFrame(
         {
@@ -157,6 +167,9 @@ def _values(text: dict[str, pa.Array], raw: pd.DataFrame, times: ParsedTimes) ->
             "magnitude": decimals(text["magnitude"]),
             "magnitude_type": plain["magnitude_type"],
             "event_type": plain["event_type"],
+            "strike_deg": strike,
+            "dip_deg": dip,
+            "rake_deg": rake,
             "day_only": times.day_only,
             "source_file": plain["source_file"],
             "source_line": raw["source_line"].to_numpy(),

@@ -29,6 +29,9 @@ USUAL_NAMES: dict[str, tuple[str, ...]] = {
     "magnitude_type": ("magnitude_type", "magtype", "mag_type", "magnitudetype"),
     "event_id": ("event_id", "eventid", "id"),
     "event_type": ("event_type", "eventtype", "type"),
+    "strike": ("strike", "strike_deg", "strike1"),
+    "dip": ("dip", "dip_deg", "dip1"),
+    "rake": ("rake", "rake_deg", "rake1"),
     "updated": ("updated", "last_modified"),
 }  # fmt: skip
 """Usual names (common practice), compared without case, units and punctuation."""

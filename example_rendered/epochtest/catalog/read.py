@@ -20,7 +20,7 @@ from epochtest.study.settings import CatalogSettings, ColumnMap
 
 RAW_TEXT_COLUMNS = (
     "event_id", "time", "latitude", "longitude", "depth", "magnitude", "magnitude_type",
-    "event_type", "updated", "fault", "source_file",
+    "event_type", "strike", "dip", "rake", "updated", "fault", "source_file",
 )  # fmt: skip
 """Columns of a raw table, all text; ``source_line`` (int64) follows. Absent columns are empty."""
 

@@ -20,6 +20,9 @@ COLUMNS: dict[str, tuple[str, str]] = {
     "magnitude": ("float64", "double"),
     "magnitude_type": ("str", "string"),
     "event_type": ("str", "string"),
+    "strike_deg": ("float64", "double"),
+    "dip_deg": ("float64", "double"),
+    "rake_deg": ("float64", "double"),
     "day_only": ("bool", "bool"),
     "source_file": ("str", "string"),
     "source_line": ("int64", "int64"),
@@ -28,7 +31,8 @@ COLUMNS: dict[str, tuple[str, str]] = {
 
 ``time_utc`` is UTC without a zone; ``longitude_deg`` lies in -180..180; ``depth_km`` is
 positive down and NaN where missing; ``day_only`` marks rows dated to the day, which stand at
-12:00 UTC; ``source_line`` is the 1-based line in ``source_file`` where the row begins.
+12:00 UTC; strike, dip and rake are those of one nodal plane, all three or NaN;
+``source_line`` is the 1-based line in ``source_file`` where the row begins.
 """
 
 _ARROW = {

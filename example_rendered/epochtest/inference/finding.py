@@ -6,7 +6,7 @@ under every null, on the claimed side? - if not, would the asserted effect have 
 
 from __future__ import annotations
 
-from epochtest.study.claims import Claim
+from epochtest.study.claims import TimingClaim
 from epochtest.study.results import FamilyAdjustment, FindingWord, TestResult
 
 
@@ -23,7 +23,7 @@ def too_few(test: TestResult) -> list[str]:
     return clauses
 
 
-def _beyond_reach(claim: Claim, detectable: float | None) -> bool:
+def _beyond_reach(claim: TimingClaim, detectable: float | None) -> bool:
     """Whether the asserted effect is smaller than the smallest detectable one."""
     if detectable is None:
         return True

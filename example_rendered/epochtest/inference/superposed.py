@@ -13,20 +13,25 @@ from epochtest.inference.multiplicity import critical_value
 from epochtest.inference.power import detectable_ratio
 from epochtest.inference.shift import ShiftSeries, hits_at_all_shifts, null_result
 from epochtest.inference.windows import (
+    Counts,
     Grid,
     Interval,
     bin_counts,
     coverage,
     epochs_reaching,
-    exact_hits,
+    hits_by_window,
     window_mask,
 )
-from epochtest.study.claims import Claim
+from epochtest.study.claims import TimingClaim
 from epochtest.study.results import Effect, NullResult, TestResult
 from epochtest.study.settings import InferenceSettings
 
 COARSE_GRID = 0.02
 """Relative difference of grid and exact coverage above which the grid is called coarse."""
+ONE_SEQUENCE = 0.2
+"""Share of all hits in a single window from which the result is said to rest on one sequence."""
+FEWEST_IN_ONE_WINDOW = 10
+"""Below this many hits in a window no sequence is spoken of."""
 FEWEST_EFFECTIVE_SHIFTS = 100
 """Below this many independent shifts the power at small alpha is lower than stated.
 
@@ -44,7 +49,7 @@ class TimingSeries:
 
 
 def test_timing(
-    claim: Claim,
+    claim: TimingClaim,
     times_utc: ArrayLike,
     epochs_utc: ArrayLike,
     span: Interval,
@@ -75,7 +80,8 @@ def test_timing(
         hours=grid.step_hours,
     )
     n, share = times.size, coverage(epochs, window, span)
-    hits = exact_hits(times, epochs, window)
+    by_window = hits_by_window(times, epochs, window)
+    hits = int(by_window.sum())
     own_critical = critical_value(shifts.standardised(claim.direction), settings.alpha)
     effect = Effect(
         rate_ratio=rate_ratio(hits, n, share),
@@ -98,12 +104,27 @@ def test_timing(
         binomial_p=binomial_p(hits, n, share, claim.direction),
         nulls=(null,),
         effect=effect,
-        warnings=_warnings(grid, null, share, float(mask.mean()), n - int(counts.sum())),
+        warnings=(
+            *_warnings(grid, null, share, float(mask.mean()), n - int(counts.sum())),
+            *_one_sequence(by_window, hits),
+        ),
     )
     return result, TimingSeries(shifts, lag_profile(grid, times, epochs, window))
 
 
 test_timing.__test__ = False  # type: ignore[attr-defined]  # pytest: not a test function
+
+
+def _one_sequence(by_window: Counts, hits: int) -> tuple[str, ...]:
+    """A sentence if a single window holds much of all that was hit."""
+    most = int(by_window.max(initial=0))
+    if most < FEWEST_IN_ONE_WINDOW or most < ONE_SEQUENCE * hits:
+        return ()
+    return (
+        f"{most} of the {hits} hits fall into a single window: the result rests on one sequence. "
+        "The shift null allows for that, but one such coincidence can make a small p; look at "
+        "the timeline, and at the claim without that sequence.",
+    )
 
 
 def with_family(test: TestResult, critical_z: float) -> TestResult:

@@ -160,12 +160,16 @@ def union_us(epochs_utc: ArrayLike, window_days: WindowDays) -> tuple[Counts, Co
     return merge_intervals(epochs + first, epochs + last)
 
 
-def exact_hits(times_utc: ArrayLike, epochs_utc: ArrayLike, window_days: WindowDays) -> int:
-    """Earthquakes inside the union of all windows, each counted once."""
+def hits_by_window(times_utc: ArrayLike, epochs_utc: ArrayLike, window_days: WindowDays) -> Counts:
+    """Earthquakes (k,) in each of the k disjoint pieces of the union of all windows, in order."""
     starts, ends = union_us(epochs_utc, window_days)
     times = sorted_us(times_utc, "earthquakes")
-    inside = np.searchsorted(times, ends) - np.searchsorted(times, starts)
-    return int(inside.sum())
+    return np.asarray(np.searchsorted(times, ends) - np.searchsorted(times, starts))
+
+
+def exact_hits(times_utc: ArrayLike, epochs_utc: ArrayLike, window_days: WindowDays) -> int:
+    """Earthquakes inside the union of all windows, each counted once."""
+    return int(hits_by_window(times_utc, epochs_utc, window_days).sum())
 
 
 def coverage(epochs_utc: ArrayLike, window_days: WindowDays, span: Interval) -> float:

@@ -10,14 +10,24 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 from epochtest.errors import EpochtestError
+from epochtest.inference.windows import span_instants
 from epochtest.pipeline.catalog_step import CatalogStep, catalog_of
 from epochtest.pipeline.epochs_step import epochs_of
 from epochtest.pipeline.parameters import PARAMETERS, declared_names
 from epochtest.pipeline.superposed_step import selected_earthquakes
-from epochtest.study.claims import Claim
+from epochtest.sky.ephemeris import open_ephemeris
+from epochtest.sky.events import search_span
+from epochtest.study.claims import ForcingClaim, RecurrenceClaim, TimingClaim
 from epochtest.study.load import LoadedStudy
+from epochtest.study.words import described
 from epochtest.tables import numbers
-from epochtest.tables.protocol import selection_in_words, window_in_words
+from epochtest.tables.protocol import (
+    assertion_in_words,
+    place_in_words,
+    recurrence_in_words,
+    selection_in_words,
+    window_in_words,
+)
 
 
 @dataclass
@@ -48,7 +58,13 @@ def check_study(study: LoadedStudy) -> CheckReport:
     if isinstance(catalog, CatalogStep):
         _describe_catalog(report, catalog)
     for claim in study.claims:
-        _describe_claim(report, study, claim, catalog)
+        match claim:
+            case TimingClaim():
+                _describe_timing(report, study, claim, catalog)
+            case RecurrenceClaim():
+                _describe_recurrence(report, study, claim)
+            case ForcingClaim():
+                _describe_forcing(report, study, claim, catalog)
     return report
 
 
@@ -72,14 +88,13 @@ def _describe_catalog(report: CheckReport, catalog: CatalogStep) -> None:
     report.warnings.extend(result.notes)
 
 
-def _describe_claim(
-    report: CheckReport, study: LoadedStudy, claim: Claim, catalog: CatalogStep | None
+def _describe_timing(
+    report: CheckReport, study: LoadedStudy, claim: TimingClaim, catalog: CatalogStep | None
 ) -> None:
     step = _guarded(report, lambda: epochs_of(study, claim))
     if step is None:
         return
     result = step.result
-    selection = study.selection_of(claim)
     report.lines += [
         f"{claim.id}: {claim.title}",
         f"  event      {result.description}",
@@ -87,7 +102,6 @@ def _describe_claim(
         f"  epochs     {numbers.count(result.n_epochs)} "
         f"({result.overlapping_windows} windows overlap the one before)",
         f"  coverage   {numbers.percent(result.coverage)} of the span",
-        f"  selection  {selection_in_words(selection)}",
     ]
     report.warnings += [f"{claim.id}: {note}" for note in result.notes]
     if result.n_epochs < claim.minimum.epochs:
@@ -95,20 +109,57 @@ def _describe_claim(
             f"{claim.id}: {result.n_epochs} epochs are fewer than its own minimum of "
             f"{claim.minimum.epochs}; the finding will be 'cannot tell'."
         )
-    if catalog is None:
-        return
-    selected = _guarded(report, lambda: selected_earthquakes(study, claim, catalog.kept))
-    if selected is None:
-        return
-    report.lines.append(f"  selected   {numbers.count(len(selected))} earthquakes in the span")
-    if len(selected) < claim.minimum.earthquakes:
+    selected = _describe_selection(report, study, claim, catalog)
+    if selected is not None and selected < claim.minimum.earthquakes:
         report.warnings.append(
-            f"{claim.id}: {len(selected)} earthquakes are fewer than its own minimum of "
+            f"{claim.id}: {selected} earthquakes are fewer than its own minimum of "
             f"{claim.minimum.earthquakes}; the finding will be 'cannot tell'."
         )
-    mc, floor = catalog.result.sizes.mc, selection.minimum_magnitude
+    if catalog is None:
+        return
+    mc, floor = catalog.result.sizes.mc, study.selection_of(claim).minimum_magnitude
     if mc is not None and (floor is None or floor < mc):
         report.warnings.append(
             f"{claim.id}: its magnitude floor ({'none' if floor is None else f'{floor:g}'}) is "
             f"below the completeness of the catalog (about {mc:.2f})."
         )
+
+
+def _describe_selection(
+    report: CheckReport,
+    study: LoadedStudy,
+    claim: TimingClaim | ForcingClaim,
+    catalog: CatalogStep | None,
+) -> int | None:
+    """Say which earthquakes count, over the whole span; how many, or None if it cannot be told."""
+    report.lines.append(f"  selection  {selection_in_words(study.selection_of(claim))}")
+    if catalog is None:
+        return None
+    selected = _guarded(report, lambda: selected_earthquakes(study, claim, catalog.kept))
+    if selected is None:
+        return None
+    report.lines.append(f"  selected   {numbers.count(len(selected))} earthquakes in the span")
+    return len(selected)
+
+
+def _describe_recurrence(report: CheckReport, study: LoadedStudy, claim: RecurrenceClaim) -> None:
+    kernel = study.settings.ephemeris.kernel
+    report.lines += [
+        f"{claim.id}: {claim.title}",
+        f"  event      {described(claim.event, kernel)}",
+        f"  asserts    {'; '.join(recurrence_in_words(claim.recurrence))}",
+        f"  searches   the whole span of {kernel}; looks at no earthquake",
+    ]
+
+
+def _describe_forcing(
+    report: CheckReport, study: LoadedStudy, claim: ForcingClaim, catalog: CatalogStep | None
+) -> None:
+    ephemeris = open_ephemeris(study.settings.ephemeris.kernel)
+    _guarded(report, lambda: search_span(ephemeris, *span_instants(claim.span)))
+    report.lines += [
+        f"{claim.id}: {claim.title}",
+        f"  place      {place_in_words(claim.place)}, {claim.span.start} to {claim.span.end}",
+        f"  asserts    {assertion_in_words(claim.asserts)}",
+    ]
+    _describe_selection(report, study, claim, catalog)

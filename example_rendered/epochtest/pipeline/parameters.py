@@ -39,6 +39,21 @@ class SuperposedEpochParameters(Strict):
     output: str = ""
 
 
+class RecurrenceParameters(Strict):
+    """3_recurrence."""
+
+    claim: str = Field(min_length=1)
+    output: str = ""
+
+
+class ForcingParameters(Strict):
+    """3_forcing; an empty folder means the newest artifact of the study."""
+
+    claim: str = Field(min_length=1)
+    catalog_artifact: str = ""
+    output: str = ""
+
+
 class ReportParameters(Strict):
     """4_report; empty folders mean the newest artifacts of the study."""
 
@@ -52,6 +67,8 @@ PARAMETERS: dict[str, type[Strict]] = {
     "1_catalog": CatalogParameters,
     "2_epochs": EpochsParameters,
     "3_superposed_epoch": SuperposedEpochParameters,
+    "3_recurrence": RecurrenceParameters,
+    "3_forcing": ForcingParameters,
     "4_report": ReportParameters,
 }
 

@@ -2,10 +2,10 @@
 
 ::
 
-    1_catalog ----------------------+
-    2_epochs.<claim> --+            |      (one per claim)
-                       +-- 3_superposed_epoch.<claim> --+
-                                                        +-- 4_report
+    1_catalog --+-- 3_superposed_epoch.<claim> --+      timing claims
+                |     2_epochs.<claim> --+       |
+                +-- 3_forcing.<claim> -----------+      forcing claims
+                    3_recurrence.<claim> --------+-- 4_report
 
 A key holds the notebook, its inputs by content, the parts of the protocol that the step reads,
 the library and the package versions; upstream artifacts enter by their own keys. Nothing is
@@ -22,12 +22,15 @@ from epochtest.catalog.sources import verify_sources
 from epochtest.files import sha256_of
 from epochtest.pipeline.hashing import key_of, library_sha256, package_versions
 from epochtest.pipeline.store import Slot
-from epochtest.study.claims import Claim, ListedDates
+from epochtest.study.claims import Claim, ForcingClaim, RecurrenceClaim, TimingClaim
+from epochtest.study.events import ListedDates
 from epochtest.study.load import LoadedStudy
 
 CATALOG = "1_catalog"
 EPOCHS = "2_epochs"
 SUPERPOSED = "3_superposed_epoch"
+RECURRENCE = "3_recurrence"
+FORCING = "3_forcing"
 REPORT = "4_report"
 
 
@@ -90,7 +93,7 @@ class Plan:
         }
         return self._step(CATALOG, CATALOG, ingredients, {})
 
-    def epochs(self, claim: Claim) -> Step:
+    def epochs(self, claim: TimingClaim) -> Step:
         """The event set of one claim."""
         settings = self.study.settings
         ingredients = {
@@ -104,7 +107,7 @@ class Plan:
             ingredients["listed"] = self._file_hash(claim.event.file)
         return self._step(f"{EPOCHS}.{claim.id}", EPOCHS, ingredients, {"claim": claim.id})
 
-    def superposed(self, claim: Claim) -> Step:
+    def superposed(self, claim: TimingClaim) -> Step:
         """The test of one claim."""
         epochs, settings = self.epochs(claim), self.study.settings
         selection = self.study.selection_of(claim)
@@ -128,12 +131,47 @@ class Plan:
             name, SUPERPOSED, ingredients, parameters, (self.catalog.name, epochs.name)
         )
 
+    def recurrence(self, claim: RecurrenceClaim) -> Step:
+        """The occurrences of one configuration over the whole kernel."""
+        ingredients = {
+            "claim": claim.model_dump(mode="json"),
+            "kernel": self.study.settings.ephemeris.kernel,
+        }
+        return self._step(f"{RECURRENCE}.{claim.id}", RECURRENCE, ingredients, {"claim": claim.id})
+
+    def forcing(self, claim: ForcingClaim) -> Step:
+        """The tides of all bodies at a place, and the tidal phases of the catalog."""
+        settings, selection = self.study.settings, self.study.selection_of(claim)
+        ingredients = {
+            "claim": claim.model_dump(mode="json"),
+            "selection": selection.model_dump(mode="json"),
+            "span": settings.span.model_dump(mode="json"),
+            "kernel": settings.ephemeris.kernel,
+            "catalog": self.catalog.slot.key,
+        }
+        if selection.polygon is not None:
+            ingredients["polygon"] = self._file_hash(selection.polygon)
+        parameters = {"claim": claim.id, "catalog_artifact": self.catalog.slot.folder}
+        return self._step(
+            f"{FORCING}.{claim.id}", FORCING, ingredients, parameters, (self.catalog.name,)
+        )
+
+    def of(self, claim: Claim) -> list[Step]:
+        """The steps of one claim; the last one holds its result."""
+        match claim:
+            case TimingClaim():
+                return [self.epochs(claim), self.superposed(claim)]
+            case RecurrenceClaim():
+                return [self.recurrence(claim)]
+            case ForcingClaim():
+                return [self.forcing(claim)]
+
     @cached_property
     def report(self) -> Step:
         """All claims together: the family, the findings, the report."""
         study = self.study
-        epochs = {claim.id: self.epochs(claim).slot for claim in study.claims}
-        tests = {claim.id: self.superposed(claim).slot for claim in study.claims}
+        epochs = {claim.id: self.epochs(claim).slot for claim in study.timing_claims}
+        tests = {claim.id: self.of(claim)[-1].slot for claim in study.claims}
         ingredients = {
             "settings": study.settings.model_dump(mode="json"),
             "sources": study.sources.model_dump(mode="json"),
@@ -156,9 +194,10 @@ class Plan:
     def steps(self, claims: tuple[Claim, ...] | None = None) -> list[Step]:
         """Every step, or those up to the tests of the named claims (then without the report)."""
         chosen = self.study.claims if claims is None else claims
+        by_claim = [self.of(claim) for claim in chosen]
         steps = [self.catalog]
-        steps += [self.epochs(claim) for claim in chosen]
-        steps += [self.superposed(claim) for claim in chosen]
+        steps += [step for steps_of_claim in by_claim for step in steps_of_claim[:-1]]
+        steps += [steps_of_claim[-1] for steps_of_claim in by_claim]
         if claims is None:
             steps.append(self.report)
         return steps

@@ -19,15 +19,18 @@ from epochtest.files import sha256_of
 from epochtest.inference.finding import decide, sentence
 from epochtest.inference.multiplicity import adjust_family
 from epochtest.inference.superposed import with_family
-from epochtest.pipeline import catalog_step, epochs_step
-from epochtest.pipeline.block import Block, heading, link, paragraph, quotation, stacked
+from epochtest.pipeline import catalog_step, epochs_step, forcing_step, recurrence_step
+from epochtest.pipeline.block import Block, Shown, heading, link, paragraph, quotation, stacked
 from epochtest.pipeline.catalog_step import CatalogStep
-from epochtest.pipeline.frames import artifact_folder, output_folder, read_result, result_text
+from epochtest.pipeline.forcing_step import ForcingStep
+from epochtest.pipeline.frames import artifact_folder, output_folder, result_text
 from epochtest.pipeline.hashing import library_sha256, package_versions
+from epochtest.pipeline.recurrence_step import RecurrenceStep
 from epochtest.pipeline.store import RESULT
 from epochtest.pipeline.superposed_step import SuperposedStep, tested
 from epochtest.study.load import LoadedStudy, load_study
-from epochtest.study.results import CAUTION, ClaimResult, TestResult
+from epochtest.study.results import CAUTION, ClaimResult
+from epochtest.study.sky_results import ForcingResult, RecurrenceResult
 
 # Anchors set in 4_report.ipynb.
 SECTIONS = {
@@ -48,10 +51,14 @@ class ReportStep:
     study: LoadedStudy
     catalog: CatalogStep
     tests: tuple[SuperposedStep, ...]
+    recurrences: tuple[RecurrenceStep, ...] = ()
+    forcings: tuple[ForcingStep, ...] = ()
 
     @cached_property
     def results(self) -> tuple[ClaimResult, ...]:
-        """The decided claims, in the order of the claim files."""
+        """The timing claims, decided together, in the order of the claim files."""
+        if not self.tests:
+            return ()
         settings = self.study.settings.inference
 
         def row(j: int) -> np.ndarray:
@@ -77,6 +84,14 @@ class ReportStep:
             )
         return tuple(decided)
 
+    @property
+    def sky_results(self) -> tuple[RecurrenceResult | ForcingResult, ...]:
+        """The claims about the sky alone."""
+        return (
+            *(step.result for step in self.recurrences),
+            *(step.result for step in self.forcings),
+        )
+
     def title(self) -> Block:
         """Name, question and who answers for the study."""
         about = self.study.settings.about
@@ -97,9 +112,15 @@ class ReportStep:
         items = "".join(f"<li>{part}</li>" for part in parts)
         return Block(f'<nav aria-label="Contents"><ul>{items}</ul></nav>', "Contents")
 
-    def findings(self) -> tables.HtmlTable:
-        """One row per claim."""
-        return tables.html(tables.findings_table(self.results), "Findings")
+    def findings(self) -> Block:
+        """One row per claim: the tested ones, then those about the sky alone."""
+        pieces: list[Shown] = []
+        if self.results:
+            pieces.append(tables.html(tables.findings_table(self.results), "Findings"))
+        if self.sky_results:
+            frame = tables.sky_findings_table(self.sky_results)
+            pieces.append(tables.html(frame, "Claims about the sky alone"))
+        return stacked(*pieces)
 
     def effects(self) -> charts.Figure:
         """Rate ratios of all claims on one axis."""
@@ -108,11 +129,15 @@ class ReportStep:
     def claims(self) -> Block:
         """One section per claim."""
         pairs = zip(self.tests, self.results, strict=True)
-        return stacked(*(self._claim(test, result) for test, result in pairs))
+        return stacked(
+            *(self._claim(test, result) for test, result in pairs),
+            *(step.section() for step in self.recurrences),
+            *(step.section() for step in self.forcings),
+        )
 
     def _claim(self, test: SuperposedStep, result: ClaimResult) -> Block:
         claim = test.claim
-        pieces: list[Block | charts.Figure | tables.HtmlTable] = [
+        pieces: list[Shown] = [
             heading(3, claim.title, f"claim-{claim.id}"),
             quotation(claim.statement),
         ]
@@ -139,6 +164,13 @@ class ReportStep:
             tables.base_rates_table([test.epochs.result for test in self.tests]),
             "Base rates of the sky events",
         )
+
+    def family(self) -> Block:
+        """Base rates of the line-ups that claims of this study could have chosen from."""
+        for test in self.tests:
+            if test.epochs.result.family is not None:
+                return test.epochs.family()
+        return paragraph("No claim of this study is about a line-up of Sun and planets.")
 
     def epoch_charts(self) -> Block:
         """Epochs per year and the intervals between them, claim by claim."""
@@ -175,14 +207,14 @@ class ReportStep:
         if folder is None:
             return "Nothing written: no output folder was given."
         (folder / "results").mkdir(exist_ok=True)
-        for result in self.results:
-            path = folder / "results" / f"{result.test.claim.id}.json"
+        for result in (*self.results, *self.sky_results):
+            path = folder / "results" / f"{_claim_id(result)}.json"
             path.write_text(result_text(result), encoding="utf-8", newline="\n")
-        table = tables.findings_numbers(self.results)
+        table = tables.findings_numbers(self.results, self.sky_results)
         table.to_csv(
             folder / "findings.csv", index=False, lineterminator="\n", float_format="%.12g"
         )
-        return f"{len(self.results)} findings written."
+        return f"{len(self.results) + len(self.sky_results)} findings written."
 
 
 def compute(
@@ -195,12 +227,11 @@ def compute(
     catalog = catalog_step.load(study, catalog_artifact)
     epochs_at, tests_at = epochs_artifacts or {}, test_artifacts or {}
     tests = []
-    for claim in study.claims:
+    for claim in study.timing_claims:
         epochs = epochs_step.load(study.root, claim, epochs_at.get(claim.id, ""))
         test = tested(study, claim, catalog, epochs)
         step = f"3_superposed_epoch.{claim.id}"
         folder = artifact_folder(study.root, tests_at.get(claim.id, ""), step)
-        read_result(TestResult, folder)
         if (folder / RESULT).read_text(encoding="utf-8") != result_text(test.result):
             raise MissingArtifactError(
                 f"{step}: its result is not what its catalog and epochs give; "
@@ -208,4 +239,16 @@ def compute(
                 step=step,
             )
         tests.append(test)
-    return ReportStep(study, catalog, tuple(tests))
+    recurrences = [
+        recurrence_step.load(study.root, claim, tests_at.get(claim.id, ""))
+        for claim in study.recurrence_claims
+    ]
+    forcings = [
+        forcing_step.load(study, claim, catalog, tests_at.get(claim.id, ""))
+        for claim in study.forcing_claims
+    ]
+    return ReportStep(study, catalog, tuple(tests), tuple(recurrences), tuple(forcings))
+
+
+def _claim_id(result: ClaimResult | RecurrenceResult | ForcingResult) -> str:
+    return result.test.claim.id if isinstance(result, ClaimResult) else result.claim.id

@@ -7,7 +7,6 @@ the others.
 
 from __future__ import annotations
 
-import json
 import multiprocessing
 import os
 import shutil
@@ -16,7 +15,9 @@ from concurrent.futures import FIRST_COMPLETED, Future, ProcessPoolExecutor, wai
 from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Literal
+from typing import Annotated, Literal
+
+from pydantic import Field, TypeAdapter
 
 from epochtest.errors import EpochtestError, NotebookError
 from epochtest.pipeline.parameters import checked
@@ -25,6 +26,11 @@ from epochtest.pipeline.store import NOTEBOOK, Store
 from epochtest.study.claims import Claim
 from epochtest.study.load import LoadedStudy
 from epochtest.study.results import ClaimResult
+from epochtest.study.sky_results import ForcingResult, RecurrenceResult
+
+_RESULT: TypeAdapter[ClaimResult | RecurrenceResult | ForcingResult] = TypeAdapter(
+    Annotated[ClaimResult | RecurrenceResult | ForcingResult, Field(discriminator="schema_version")]
+)
 
 Event = Literal["total", "skipped", "started", "made", "failed", "blocked"]
 Listener = Callable[[str, Event, str], None]
@@ -173,10 +179,16 @@ def _lay_out(store: Store, plan: Plan) -> None:
         os.replace(partial, target)
 
 
-def claim_results(root: Path) -> list[ClaimResult]:
-    """The decided claims of the newest report, in the order of their ids."""
-    folder = root / "runs" / "results"
-    return [
-        ClaimResult.model_validate(json.loads(path.read_text(encoding="utf-8")))
-        for path in sorted(folder.glob("*.json"))
-    ]
+def claim_results(
+    root: Path,
+) -> tuple[list[ClaimResult], list[RecurrenceResult | ForcingResult]]:
+    """The claims of the newest report, by id: the tested ones, and those about the sky alone."""
+    tested: list[ClaimResult] = []
+    sky: list[RecurrenceResult | ForcingResult] = []
+    for path in sorted((root / "runs" / "results").glob("*.json")):
+        result = _RESULT.validate_json(path.read_text(encoding="utf-8"))
+        if isinstance(result, ClaimResult):
+            tested.append(result)
+        else:
+            sky.append(result)
+    return tested, sky

@@ -17,7 +17,7 @@ from epochtest.pipeline.catalog_step import CatalogStep
 from epochtest.pipeline.epochs_step import EpochsStep
 from epochtest.pipeline.frames import output_folder, result_text
 from epochtest.pipeline.store import RESULT
-from epochtest.study.claims import Claim
+from epochtest.study.claims import ForcingClaim, TimingClaim
 from epochtest.study.load import LoadedStudy, load_study
 from epochtest.study.results import TestResult
 
@@ -27,7 +27,7 @@ class SuperposedStep:
     """One claim tested: the numbers (``result``) and what its charts are drawn from."""
 
     study: LoadedStudy
-    claim: Claim
+    claim: TimingClaim
     selected: pd.DataFrame
     epochs: EpochsStep
     result: TestResult
@@ -91,7 +91,9 @@ class SuperposedStep:
         return "Result written."
 
 
-def selected_earthquakes(study: LoadedStudy, claim: Claim, kept: pd.DataFrame) -> pd.DataFrame:
+def selected_earthquakes(
+    study: LoadedStudy, claim: TimingClaim | ForcingClaim, kept: pd.DataFrame
+) -> pd.DataFrame:
     """The clean catalog's rows inside the span that count for a claim."""
     start, end = span_instants(study.settings.span)
     chosen = select(kept, study.selection_of(claim), study.root) & in_span(kept, start, end)
@@ -99,7 +101,7 @@ def selected_earthquakes(study: LoadedStudy, claim: Claim, kept: pd.DataFrame) -
 
 
 def tested(
-    study: LoadedStudy, claim: Claim, catalog: CatalogStep, epochs: EpochsStep
+    study: LoadedStudy, claim: TimingClaim, catalog: CatalogStep, epochs: EpochsStep
 ) -> SuperposedStep:
     """Test one claim on a cleaned catalog and its event set."""
     selected = selected_earthquakes(study, claim, catalog.kept)
@@ -116,7 +118,7 @@ def tested(
 
 
 def _catalog_warnings(
-    study: LoadedStudy, claim: Claim, catalog: CatalogStep, selected: pd.DataFrame
+    study: LoadedStudy, claim: TimingClaim, catalog: CatalogStep, selected: pd.DataFrame
 ) -> list[str]:
     found = []
     floor, mc = study.selection_of(claim).minimum_magnitude, catalog.result.sizes.mc
@@ -138,7 +140,7 @@ def _catalog_warnings(
 def compute(claim: str, catalog_artifact: str = "", epochs_artifact: str = "") -> SuperposedStep:
     """The step for a notebook: one claim of the study around the working folder."""
     study = load_study()
-    chosen = study.claim(claim)
+    chosen = study.timing_claim(claim)
     return tested(
         study,
         chosen,

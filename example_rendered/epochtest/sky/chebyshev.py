@@ -55,8 +55,9 @@ class Segment:
         """Cell of each instant, and where in it from -1 to 1.
 
         Cells begin at multiples of half a day, so the difference to the begin loses nothing.
+        (At a seam rounding may choose either cell; both hold the same place.)
         """
-        cell = ((days - self._first_days) // self._length_days).astype(np.intp)
+        cell = ((days - self._first_days) * (1.0 / self._length_days)).astype(np.intp)
         cell = np.minimum(cell, len(self._coefficients) - 1)
         since = days - (self._first_days + cell * self._length_days)
         return cell, since * (2.0 / self._length_days) - 1.0

@@ -10,7 +10,9 @@ Apparent: what a geocentric observer would see: light-time, deflection by the Su
 
 Longitudes of date come from the *mean* equinox. Nutation turns the equinox along the ecliptic,
 which adds the same angle to every longitude and nothing to a latitude; a difference of two
-longitudes, and so every instant found here, is free of it. That saves the 1,400-term series.
+longitudes is free of it, and that saves the series. Where one longitude counts by itself
+(equinoxes, stations), or a declination, `apparent_longitude_deg` and
+`apparent_equatorial_vectors` add nutation and so refer to the *true* equinox and equator.
 """
 
 from __future__ import annotations
@@ -18,11 +20,11 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from skyfield.framelib import ICRS_to_J2000
-from skyfield.nutationlib import mean_obliquity
+from skyfield.nutationlib import iau2000b, mean_obliquity
 from skyfield.precessionlib import compute_precession
 
 from epochtest.sky.ephemeris import SPEED_OF_LIGHT_KM_PER_DAY, Ephemeris, Vectors
-from epochtest.study.claims import Body
+from epochtest.study.events import Body
 from epochtest.timescale import J2000_JD, Days
 
 Values = NDArray[np.float64]
@@ -30,6 +32,9 @@ Values = NDArray[np.float64]
 OBLIQUITY_J2000_DEG = 84381.448 / 3600.0  # IAU 1976
 SUN_GM_KM3_PER_S2 = 132712440041.28  # DE440, table 2 of Park et al. (2021)
 _LIGHT_TIME_PASSES = 2  # from the geometric distance; each gains a factor v/c = 1e-4
+_FIRST_STEP_DAYS = 1e-3
+_NUTATION_UNIT_RAD = np.radians(1e-7 / 3600.0)  # of Skyfield's series
+_NUTATION_CHUNK = 4096  # instants whose 77 terms are held at once: 2.5 MB an array
 _BEHIND = 0.99999999999  # |cos| above which deflection by the Sun is left out (0.9" from it)
 
 
@@ -126,6 +131,52 @@ def apparent_ecliptic(
     return spherical(apparent_vectors(ephemeris, (body,), tdb_days)[0])
 
 
+def nutation_rad(tdb_days: Days) -> tuple[Values, Values]:
+    """Nutation in longitude and in obliquity (n,), radians, at ``tdb_days`` (n,).
+
+    IAU 2000B (McCarthy & Luzum 2003, Celest. Mech. 85:37): 77 terms, within 1 mas of the full
+    series in 1995-2050 and a few mas elsewhere.
+    """
+    angles = np.empty((2, tdb_days.size))
+    for start in range(0, tdb_days.size, _NUTATION_CHUNK):
+        part = slice(start, start + _NUTATION_CHUNK)
+        angles[:, part] = iau2000b(tdb_days[part] + J2000_JD)
+    angles *= _NUTATION_UNIT_RAD
+    return angles[0], angles[1]
+
+
+def apparent_longitude_deg(ephemeris: Ephemeris, body: Body, tdb_days: ArrayLike) -> Values:
+    """Apparent geocentric longitude (n,) in [0, 360), degrees, *true* equinox of date."""
+    days = np.atleast_1d(np.asarray(tdb_days, dtype=float))
+    mean_deg, _, _ = apparent_ecliptic(ephemeris, body, days)
+    longitude: Values = (mean_deg + np.degrees(nutation_rad(days)[0])) % 360.0
+    return longitude
+
+
+def apparent_equatorial_vectors(
+    ephemeris: Ephemeris, bodies: tuple[Body, ...], tdb_days: ArrayLike
+) -> list[Vectors]:
+    """Apparent geocentric vectors (3, n) in km, *true* equator and equinox of date.
+
+    `spherical` makes right ascension, declination and light-time distance of them.
+    """
+    days = np.atleast_1d(np.asarray(tdb_days, dtype=float))
+    in_longitude, in_obliquity = nutation_rad(days)
+    tilt = np.radians(mean_obliquity(days + J2000_JD) / 3600.0) + in_obliquity
+    cos_psi, sin_psi = np.cos(in_longitude), np.sin(in_longitude)
+    cos_tilt, sin_tilt = np.cos(tilt), np.sin(tilt)
+    found = []
+    for x, y, z in apparent_vectors(ephemeris, bodies, days):
+        across = x * sin_psi + y * cos_psi
+        turned = (
+            x * cos_psi - y * sin_psi,
+            across * cos_tilt - z * sin_tilt,
+            across * sin_tilt + z * cos_tilt,
+        )
+        found.append(np.array(turned))
+    return found
+
+
 def _with_light_time(ephemeris: Ephemeris, body: Body, observer: Vectors, days: Days) -> Vectors:
     """Vector (3, n) from the observer now to ``body`` when the light left it, km, ICRF."""
     seen = ephemeris.position_km(body, days) - observer
@@ -134,9 +185,11 @@ def _with_light_time(ephemeris: Ephemeris, body: Body, observer: Vectors, days: 
         left = days - np.linalg.norm(seen, axis=0) / SPEED_OF_LIGHT_KM_PER_DAY
         seen = ephemeris.position_km(body, np.maximum(left, first)) - observer
         early = left < first
-        if early.any():  # the kernel's first hours: straight on at the first instant's velocity
-            _, rate = ephemeris.state(body, first)
-            seen[:, early] += rate * (left[early] - first)
+        if early.any():  # the kernel's first hours: on along the parabola of its first instants
+            _, rates = ephemeris.state(body, first + np.array([0.0, _FIRST_STEP_DAYS]))
+            bend = (rates[:, 1:] - rates[:, :1]) / _FIRST_STEP_DAYS
+            before = left[early] - first
+            seen[:, early] += before * (rates[:, :1] + 0.5 * before * bend)
     return seen
 
 

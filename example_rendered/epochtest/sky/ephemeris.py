@@ -20,7 +20,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from epochtest.errors import EphemerisSpanError, ProtocolError
 from epochtest.sky.chebyshev import Segment
-from epochtest.study.claims import Body
+from epochtest.study.events import Body
 from epochtest.study.settings import Kernel
 from epochtest.timescale import J2000_JD, Days, utc_from_tdb_days
 

@@ -21,7 +21,7 @@ from epochtest.sky.directions import (
 )
 from epochtest.sky.ephemeris import Ephemeris, Vectors
 from epochtest.sky.search import Roots, Series, find_roots, search_grid
-from epochtest.study.claims import (
+from epochtest.study.events import (
     PHASE_ELONGATION_DEG,
     Body,
     Frame,
@@ -29,6 +29,7 @@ from epochtest.study.claims import (
     MoonDistance,
     MoonPhase,
 )
+from epochtest.study.words import body_in_words
 from epochtest.timescale import Days, tdb_days_from_utc, utc_from_tdb_days, utc_instant
 
 SkyEvent = MoonPhase | MoonDistance | LongitudeDifference
@@ -47,16 +48,11 @@ ANOMALISTIC_STEP_DAYS = 27.55 / 12.0
 # between two spans that share an end.
 OVERLAP_DAYS = 1e-3 / 86400.0
 
-SPOKEN: dict[str, str] = {"sun": "the Sun", "moon": "the Moon", "earth": "the Earth"}
 _PHASE_LABEL = {
     "new": "new Moon",
     "first-quarter": "first quarter",
     "full": "full Moon",
     "last-quarter": "last quarter",
-}
-_FRAME_WORDS = {
-    "geometric-J2000": "geometric, J2000 ecliptic",
-    "apparent-of-date": "apparent, ecliptic of date",
 }
 
 
@@ -103,22 +99,16 @@ def find_epochs(
 
     Raises EphemerisSpanError if the span leaves the kernel; see `clip_to_kernel`.
     """
-    first_utc, last_utc = (utc_instant(edge) for edge in (from_utc, to_utc))
-    require_covered(ephemeris, first_utc, last_utc)
-    if not first_utc < last_utc:
+    span = search_span(ephemeris, from_utc, to_utc)
+    if span.empty:
         none = np.empty(0)
         return epoch_table(utc_from_tdb_days(none), none, [], none, none)
-    lowest, highest = ephemeris.covered_tdb_days
-    ends = tdb_days_from_utc(np.array([first_utc, last_utc]))
-    first = max(ends[0] - OVERLAP_DAYS, lowest)
-    last = min(ends[1] + OVERLAP_DAYS, highest)
+    first, last = span.first_days, span.last_days
     if isinstance(event, MoonDistance):
         table = _moon_distances(event, ephemeris, first, last)
     else:
         table = _differences(event, ephemeris, first, last)
-    time = table["time_utc"].to_numpy()
-    inside: pd.DataFrame = table[(time >= first_utc) & (time < last_utc)]
-    return inside.reset_index(drop=True)
+    return span.inside(table)
 
 
 def clip_to_kernel(
@@ -133,15 +123,6 @@ def clip_to_kernel(
     start = min(max(first_utc, lowest), highest)
     end = max(min(last_utc, highest), start)
     return start, end, bool(start != first_utc or end != last_utc)
-
-
-def describe(event: SkyEvent, ephemeris: Ephemeris) -> str:
-    """One phrase that names the event, its frame and the ephemeris."""
-    if isinstance(event, MoonDistance):
-        return f"{event.extreme} of the Moon (geometric, geocentric, {ephemeris.name})"
-    frame = f"({_FRAME_WORDS[event.frame]}, {ephemeris.name})"
-    _, labels = _targets(event)
-    return f"{' or '.join(dict.fromkeys(labels))} {frame}"
 
 
 def epoch_table(
@@ -163,13 +144,41 @@ def epoch_table(
     )
 
 
-def require_covered(
-    ephemeris: Ephemeris, first_utc: np.datetime64, last_utc: np.datetime64
-) -> None:
-    """Raise EphemerisSpanError, naming the covered dates, unless the kernel covers both ends."""
+class SearchSpan(NamedTuple):
+    """``from_utc <= time < to_utc``, and the days of TDB to search: 1 ms more at both ends."""
+
+    from_utc: np.datetime64
+    to_utc: np.datetime64
+    first_days: float
+    last_days: float
+
+    @property
+    def empty(self) -> bool:
+        """Whether no instant lies in the span."""
+        return not self.from_utc < self.to_utc
+
+    def inside(self, table: pd.DataFrame) -> pd.DataFrame:
+        """The rows of ``table`` whose ``time_utc`` lies in the span, numbered from 0."""
+        time = table["time_utc"].to_numpy()
+        chosen = (time >= self.from_utc) & (time < self.to_utc)
+        return (table if chosen.all() else table[chosen]).reset_index(drop=True)
+
+
+def search_span(
+    ephemeris: Ephemeris, from_utc: np.datetime64 | str, to_utc: np.datetime64 | str
+) -> SearchSpan:
+    """The span to search; raises EphemerisSpanError if it leaves the kernel."""
+    first_utc, last_utc = (utc_instant(edge) for edge in (from_utc, to_utc))
     lowest, highest = ephemeris.covered_utc
     if lowest <= first_utc and last_utc <= highest:
-        return
+        ends = tdb_days_from_utc(np.array([first_utc, last_utc]))
+        earliest, latest = ephemeris.covered_tdb_days
+        return SearchSpan(
+            first_utc,
+            last_utc,
+            max(ends[0] - OVERLAP_DAYS, earliest),
+            min(ends[1] + OVERLAP_DAYS, latest),
+        )
     covered = tuple(str(edge.astype("datetime64[D]")) for edge in (lowest, highest))
     hint = ", or choose the kernel DE440 (1550 to 2650)" if ephemeris.name == "DE421" else ""
     raise EphemerisSpanError(
@@ -237,7 +246,7 @@ def _targets(event: MoonPhase | LongitudeDifference) -> tuple[list[float], list[
             named.setdefault(angle, f"Moon {angle:g} deg east of the Sun")
         return list(named), list(named.values())
     pair = "-".join(body.capitalize() for body in event.bodies)
-    seen = f"seen from {SPOKEN.get(event.centre, event.centre.capitalize())}"
+    seen = f"seen from {body_in_words(event.centre)}"
     angles = event.angles_deg()
     words = [event.aspect or f"{angle:g} deg" for angle in angles]
     return list(angles), [f"{pair} {word} {seen}" for word in words]

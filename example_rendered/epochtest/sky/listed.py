@@ -13,7 +13,7 @@ import pandas as pd
 from epochtest.errors import ProtocolError
 from epochtest.sky.events import epoch_table
 from epochtest.study.base import nearest
-from epochtest.study.claims import ListedDates
+from epochtest.study.events import ListedDates
 from epochtest.timescale import tdb_days_from_utc, utc_instant
 
 LABEL_COLUMN = "label"

@@ -54,7 +54,9 @@ class Roots(NamedTuple):
     rising: NDArray[np.bool_]
 
 
-class _Brackets(NamedTuple):
+class Brackets(NamedTuple):
+    """Intervals (m,) in days with values of opposite sign (or zero) at their ends."""
+
     left: Days
     right: Days
     at_left: Days
@@ -108,8 +110,8 @@ def find_roots(
     on_grid = Roots(grid_days[zero_column], zero_series, _rises(table, zero_series, zero_column))
     brackets = _sign_changes(grid_days, table, angle)
     turned, touching = _beyond_stations(value, grid_days, table, angle, tolerance_days)
-    brackets = _Brackets(*(np.concatenate(pair) for pair in zip(brackets, turned, strict=True)))
-    refined = _refine(value, brackets, tolerance_days)
+    brackets = Brackets(*(np.concatenate(pair) for pair in zip(brackets, turned, strict=True)))
+    refined = refine(value, brackets, tolerance_days)
     inside = Roots(refined, brackets.series, brackets.at_right > brackets.at_left)
     together = [np.concatenate(parts) for parts in zip(on_grid, inside, touching, strict=True)]
     order = np.lexsort((together[1], together[0]))
@@ -124,20 +126,20 @@ def _rises(table: NDArray[np.float64], series: Series, column: Series) -> NDArra
     return rising
 
 
-def _sign_changes(grid: Days, table: NDArray[np.float64], angle: bool) -> _Brackets:
+def _sign_changes(grid: Days, table: NDArray[np.float64], angle: bool) -> Brackets:
     left, right = table[:, :-1], table[:, 1:]
     changes = left * right < 0.0
     if angle:
         changes &= np.abs(left - right) < HALF_TURN_DEG
     series, column = np.nonzero(changes)
-    return _Brackets(
+    return Brackets(
         grid[column], grid[column + 1], table[series, column], table[series, column + 1], series
     )
 
 
 def _beyond_stations(
     value: Difference, grid: Days, table: NDArray[np.float64], angle: bool, tolerance: float
-) -> tuple[_Brackets, Roots]:
+) -> tuple[Brackets, Roots]:
     """Brackets on both sides of every turn that crosses zero within a cell, and mere touches."""
     steps = np.diff(table, axis=1)
     steps = wrap_deg(steps) if angle else steps
@@ -157,7 +159,7 @@ def _beyond_stations(
     if series.size == 0:
         none = np.empty(0)
         return (
-            _Brackets(none, none, none, none, series),
+            Brackets(none, none, none, none, series),
             Roots(none, series, np.empty(0, dtype=bool)),
         )
     side = np.sign(table[series, column])
@@ -169,7 +171,7 @@ def _beyond_stations(
     series, column = series[crosses], column[crosses]
     instant, turn = instant[crosses], turn[crosses]
     start = np.where(instant < grid[column], column - 1, column)
-    twice = _Brackets(
+    twice = Brackets(
         np.concatenate((grid[start], instant)),
         np.concatenate((instant, grid[start + 1])),
         np.concatenate((table[series, start], turn)),
@@ -201,8 +203,16 @@ def _extrema(
     return np.asarray(found.x), side * np.asarray(found.f_x)
 
 
-def _refine(value: Difference, brackets: _Brackets, tolerance: float) -> Days:
-    """Roots (r,) of all brackets at once by Chandrupatla's method.
+def refine(
+    value: Difference,
+    brackets: Brackets,
+    tolerance: float,
+    first_guess: NDArray[np.float64] | None = None,
+) -> Days:
+    """Roots (m,) in days, to ``tolerance`` days, of all brackets at once by Chandrupatla's method.
+
+    ``first_guess`` (m,) says where to look first, from 0 at the left end to 1 at the right one
+    (default: on the secant).
 
     Chandrupatla (1997), Adv. Eng. Softw. 28:145: inverse quadratic interpolation where the
     three points look smooth, bisection elsewhere; the root stays bracketed.
@@ -210,7 +220,7 @@ def _refine(value: Difference, brackets: _Brackets, tolerance: float) -> Days:
     b, fb = brackets.left.copy(), brackets.at_left.copy()
     a, fa = brackets.right.copy(), brackets.at_right.copy()
     c, fc = a.copy(), fa.copy()
-    share = fb / (fb - fa)  # the secant, as the first guess
+    share = fb / (fb - fa) if first_guess is None else first_guess
     best = np.where(np.abs(fa) < np.abs(fb), a, b)
     live = np.arange(best.size)
     for _ in range(_MOST_PASSES):

@@ -2,119 +2,26 @@
 
 from __future__ import annotations
 
+from datetime import date, datetime
 from typing import Annotated, Literal
 
-from pydantic import Field, field_validator, model_validator
+from pydantic import Field, model_validator
 
 from epochtest.study.base import Strict
-from epochtest.study.settings import RelativePath, Selection, inside_the_study
+from epochtest.study.events import Body, Configuration, LongitudeDifference, SkyEvent
+from epochtest.study.settings import Selection, Span
 
-Body = Literal[
-    "sun", "moon", "mercury", "venus", "earth", "mars",
-    "jupiter", "saturn", "uranus", "neptune", "pluto",
-]  # fmt: skip
-Frame = Literal["geometric-J2000", "apparent-of-date"]
-PhaseName = Literal["new", "first-quarter", "full", "last-quarter"]
 NullName = Literal["circular-shift"]
 Direction = Literal["more", "fewer", "either"]
 
-PHASE_ELONGATION_DEG: dict[str, float] = {
-    "new": 0.0,
-    "first-quarter": 90.0,
-    "full": 180.0,
-    "last-quarter": 270.0,
-}
-ASPECT_ANGLE_DEG: dict[str, float] = {"conjunction": 0.0, "opposition": 180.0}
 
+class Asserted(Strict):
+    """What every kind of claim says of itself."""
 
-class MoonPhase(Strict):
-    """The Moon at given elongations (geocentric ecliptic longitude, Moon minus Sun)."""
-
-    kind: Literal["moon-phase"] = "moon-phase"
-    phases: tuple[PhaseName, ...] = ()
-    elongations_deg: tuple[float, ...] = Field(
-        (), description="Any other elongations, degrees east of the Sun, 0..360."
-    )
-    frame: Frame = "geometric-J2000"
-
-    @model_validator(mode="after")
-    def _something(self) -> MoonPhase:
-        if not self.phases and not self.elongations_deg:
-            raise ValueError("name at least one of phases, or give elongations_deg")
-        return self
-
-    @field_validator("elongations_deg")
-    @classmethod
-    def _on_the_circle(cls, angles: tuple[float, ...]) -> tuple[float, ...]:
-        if not all(0.0 <= angle < 360.0 for angle in angles):
-            raise ValueError("elongations lie in 0 <= angle < 360 degrees")
-        return angles
-
-
-class MoonDistance(Strict):
-    """The Moon nearest to the Earth (perigee) or farthest from it (apogee), geometric."""
-
-    kind: Literal["moon-distance"] = "moon-distance"
-    extreme: Literal["perigee", "apogee"]
-
-
-class LongitudeDifference(Strict):
-    """Two bodies seen from a centre with a given difference of ecliptic longitude.
-
-    The difference is first body minus second body. A conjunction is 0, an opposition 180.
-    """
-
-    kind: Literal["longitude-difference"] = "longitude-difference"
-    centre: Body
-    bodies: tuple[Body, Body]
-    aspect: Literal["conjunction", "opposition"] | None = None
-    angle_deg: float | None = Field(None, ge=0.0, lt=360.0)
-    either_side: bool = Field(False, description="Also count the difference 360 - angle.")
-    frame: Frame = "geometric-J2000"
-
-    @model_validator(mode="after")
-    def _possible(self) -> LongitudeDifference:
-        first, second = self.bodies
-        if first == second:
-            raise ValueError(f"{first!r} is named twice in bodies; name two different bodies")
-        if self.centre in self.bodies:
-            raise ValueError(
-                f"{self.centre!r} is the centre and cannot be seen from itself; "
-                "name another centre or another body"
-            )
-        if (self.aspect is None) == (self.angle_deg is None):
-            raise ValueError("give either aspect (conjunction, opposition) or angle_deg")
-        if self.frame == "apparent-of-date" and self.centre != "earth":
-            raise ValueError(
-                "apparent-of-date directions exist for centre 'earth' only; "
-                f"use geometric-J2000 for centre {self.centre!r}"
-            )
-        return self
-
-    def angles_deg(self) -> tuple[float, ...]:
-        """The differences looked for, degrees in [0, 360)."""
-        angle = ASPECT_ANGLE_DEG[self.aspect] if self.aspect else self.angle_deg
-        assert angle is not None
-        other = (360.0 - angle) % 360.0
-        return (angle, other) if self.either_side and other != angle else (angle,)
-
-
-class ListedDates(Strict):
-    """A user's own dated list: a CSV file inside the study."""
-
-    kind: Literal["listed"] = "listed"
-    file: RelativePath
-    column: str = Field("time", description="Column with UTC dates or instants.")
-
-    @field_validator("file")
-    @classmethod
-    def _inside(cls, file: str) -> str:
-        return inside_the_study(file)
-
-
-SkyEvent = Annotated[
-    MoonPhase | MoonDistance | LongitudeDifference | ListedDates, Field(discriminator="kind")
-]
+    id: str = Field(pattern=r"^[a-z0-9]+(-[a-z0-9]+)*$", max_length=60)
+    title: str = Field(min_length=1)
+    statement: str = Field(min_length=1, description="The claim in words.")
+    asserted_by: str = Field("", description="Who asserts it, free text.")
 
 
 class MinimumCounts(Strict):
@@ -124,14 +31,10 @@ class MinimumCounts(Strict):
     earthquakes: int = Field(50, ge=1)
 
 
-class TimingClaim(Strict):
+class TimingClaim(Asserted):
     """A claim that a sky event is followed (or preceded) by more, or fewer, earthquakes."""
 
-    id: str = Field(pattern=r"^[a-z0-9]+(-[a-z0-9]+)*$", max_length=60)
     kind: Literal["timing"] = "timing"
-    title: str = Field(min_length=1)
-    statement: str = Field(min_length=1, description="The claim in words.")
-    asserted_by: str = Field("", description="Who asserts it, free text.")
     event: SkyEvent
     window_days: tuple[float, float] = Field(
         description="[first, last] lag in days from the epoch; may be negative."
@@ -162,4 +65,84 @@ class TimingClaim(Strict):
         return self
 
 
-Claim = TimingClaim
+class Recurrence(Strict):
+    """What is said about the return of a configuration; at least one sentence."""
+
+    every_years: float | None = Field(None, gt=0.0, description="It happens every so many years.")
+    tolerance_years: float = Field(
+        0.5, ge=0.0, description="How far intervals and dates may lie from what is said."
+    )
+    last_happened: datetime | date | None = Field(None, description="It last happened then.")
+    before: datetime | date | None = Field(
+        None, description="The day that last and again are counted from."
+    )
+    not_again_for_years: float | None = Field(None, gt=0.0)
+    one_event_within_days: float = Field(
+        0.0, ge=0.0, description="Occurrences closer than this count as one (retrograde loops)."
+    )
+
+    @model_validator(mode="after")
+    def _says_something(self) -> Recurrence:
+        from_before = self.last_happened is not None or self.not_again_for_years is not None
+        if self.every_years is None and not from_before:
+            raise ValueError("say every_years, last_happened or not_again_for_years")
+        if self.before is None and from_before:
+            raise ValueError("last_happened and not_again_for_years need before: counted from when")
+        return self
+
+
+class RecurrenceClaim(Asserted):
+    """A claim about how rare a configuration is; looks at no earthquake."""
+
+    kind: Literal["recurrence"]
+    event: Configuration
+    recurrence: Recurrence
+
+    @model_validator(mode="after")
+    def _a_line(self) -> RecurrenceClaim:
+        if isinstance(self.event, LongitudeDifference):
+            if self.event.aspect is None:
+                raise ValueError("a recurrence is of a conjunction, an opposition or a grouping")
+            if self.event.frame != "geometric-J2000":
+                raise ValueError("a recurrence is searched in frame geometric-J2000; leave it out")
+        return self
+
+
+class Place(Strict):
+    """A point on the Earth."""
+
+    latitude_deg: float = Field(ge=-90.0, le=90.0)
+    longitude_deg: float = Field(ge=-180.0, le=360.0)
+
+
+class ForcingAssertion(Strict):
+    """A body said to pull at least so strongly, as a share of the Moon's mean pull."""
+
+    body: Body
+    at_least_share_of_moon: float = Field(gt=0.0)
+
+    @model_validator(mode="after")
+    def _not_the_earth(self) -> ForcingAssertion:
+        if self.body == "earth":
+            raise ValueError("'earth' raises no tide on itself; name the Moon, the Sun or a planet")
+        return self
+
+
+class ForcingClaim(Asserted):
+    """A claim about how strong a body's tide is at a place; measured, not tested."""
+
+    kind: Literal["forcing"]
+    place: Place
+    span: Span
+    on: datetime | date | None = Field(None, description="An instant to look at by itself, UTC.")
+    asserts: ForcingAssertion | None = None
+    selection: Selection = Selection()
+    friction: float = Field(0.4, ge=0.0, le=1.0, description="Apparent friction of faults.")
+
+
+CLAIM_MODELS: dict[str, type[TimingClaim] | type[RecurrenceClaim] | type[ForcingClaim]] = {
+    "timing": TimingClaim,
+    "recurrence": RecurrenceClaim,
+    "forcing": ForcingClaim,
+}
+Claim = Annotated[TimingClaim | RecurrenceClaim | ForcingClaim, Field(discriminator="kind")]

@@ -5,16 +5,24 @@ from __future__ import annotations
 import tomllib
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TypeVar
+from typing import Any, TypeVar
 
 from pydantic import ValidationError
 
 from epochtest.errors import ProtocolError
-from epochtest.study.base import Strict, faults_of
-from epochtest.study.claims import Claim
+from epochtest.study.base import Strict, faults_of, nearest
+from epochtest.study.claims import (
+    CLAIM_MODELS,
+    Asserted,
+    Claim,
+    ForcingClaim,
+    RecurrenceClaim,
+    TimingClaim,
+)
 from epochtest.study.settings import Selection, Sources, Study
 
 Model = TypeVar("Model", bound=Strict)
+OneClaim = TypeVar("OneClaim", bound=Asserted)
 
 
 @dataclass(frozen=True)
@@ -28,15 +36,46 @@ class LoadedStudy:
 
     def claim(self, claim_id: str) -> Claim:
         """The claim with that id; raises ProtocolError naming the known ones."""
-        for claim in self.claims:
-            if claim.id == claim_id:
-                return claim
-        known = ", ".join(claim.id for claim in self.claims) or "none"
-        raise ProtocolError.of([f"claims/: no claim has the id {claim_id!r}; known: {known}."])
+        return _named(claim_id, self.claims, "claim")
 
-    def selection_of(self, claim: Claim) -> Selection:
+    @property
+    def timing_claims(self) -> tuple[TimingClaim, ...]:
+        """The claims that are tested on earthquakes: the family that the correction pays for."""
+        return tuple(claim for claim in self.claims if isinstance(claim, TimingClaim))
+
+    @property
+    def recurrence_claims(self) -> tuple[RecurrenceClaim, ...]:
+        """The claims about how rare a configuration is."""
+        return tuple(claim for claim in self.claims if isinstance(claim, RecurrenceClaim))
+
+    @property
+    def forcing_claims(self) -> tuple[ForcingClaim, ...]:
+        """The claims about how strong a tide is."""
+        return tuple(claim for claim in self.claims if isinstance(claim, ForcingClaim))
+
+    def timing_claim(self, claim_id: str) -> TimingClaim:
+        """The timing claim with that id; raises ProtocolError naming the known ones."""
+        return _named(claim_id, self.timing_claims, "timing claim")
+
+    def recurrence_claim(self, claim_id: str) -> RecurrenceClaim:
+        """The recurrence claim with that id; raises ProtocolError naming the known ones."""
+        return _named(claim_id, self.recurrence_claims, "recurrence claim")
+
+    def forcing_claim(self, claim_id: str) -> ForcingClaim:
+        """The forcing claim with that id; raises ProtocolError naming the known ones."""
+        return _named(claim_id, self.forcing_claims, "forcing claim")
+
+    def selection_of(self, claim: TimingClaim | ForcingClaim) -> Selection:
         """The study's selection with the claim's overrides."""
         return self.settings.selection.overridden_by(claim.selection)
+
+
+def _named(claim_id: str, claims: tuple[OneClaim, ...], what: str) -> OneClaim:
+    for claim in claims:
+        if claim.id == claim_id:
+            return claim
+    known = ", ".join(claim.id for claim in claims) or "none"
+    raise ProtocolError.of([f"claims/: no {what} has the id {claim_id!r}; known: {known}."])
 
 
 def study_root(start: Path | None = None) -> Path:
@@ -50,21 +89,42 @@ def study_root(start: Path | None = None) -> Path:
     )
 
 
-def _read(model: type[Model], root: Path, name: str, faults: list[str]) -> Model | None:
-    path = root / name
+def _content(root: Path, name: str, faults: list[str]) -> dict[str, Any] | None:
     try:
-        content = tomllib.loads(path.read_text(encoding="utf-8"))
+        return tomllib.loads((root / name).read_text(encoding="utf-8"))
     except FileNotFoundError:
         faults.append(f"{name}: the file is missing; restore it.")
     except UnicodeDecodeError as error:
         faults.append(f"{name}: is not UTF-8 text (byte {error.start}); save it as UTF-8.")
     except tomllib.TOMLDecodeError as error:
         faults.append(f"{name}: is not valid TOML: {error}; mend that line.")
-    else:
-        try:
-            return model.model_validate(content)
-        except ValidationError as error:
-            faults.extend(faults_of(model, error, name))
+    return None
+
+
+def _read(model: type[Model], root: Path, name: str, faults: list[str]) -> Model | None:
+    content = _content(root, name, faults)
+    try:
+        return None if content is None else model.model_validate(content)
+    except ValidationError as error:
+        faults.extend(faults_of(model, error, name))
+    return None
+
+
+def _read_claim(root: Path, name: str, faults: list[str]) -> Claim | None:
+    content = _content(root, name, faults)
+    if content is None:
+        return None
+    kind = content.get("kind", "timing")
+    model = CLAIM_MODELS.get(kind) if isinstance(kind, str) else None
+    if model is None:
+        guess = nearest(str(kind), CLAIM_MODELS)
+        hint = f" Did you mean {guess!r}?" if guess else ""
+        faults.append(f"{name}: kind: {kind!r} is not one of {', '.join(CLAIM_MODELS)}.{hint}")
+        return None
+    try:
+        return model.model_validate(content)
+    except ValidationError as error:
+        faults.extend(faults_of(model, error, name))
     return None
 
 
@@ -77,7 +137,7 @@ def load_study(root: Path | None = None) -> LoadedStudy:
     claims: list[Claim] = []
     for path in sorted((folder / "claims").glob("*.toml")):
         name = f"claims/{path.name}"
-        claim = _read(Claim, folder, name, faults)
+        claim = _read_claim(folder, name, faults)
         if claim is None:
             continue
         if claim.id != path.stem:

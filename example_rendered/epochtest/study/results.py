@@ -11,7 +11,7 @@ from typing import Literal
 from pydantic import Field
 
 from epochtest.study.base import Strict
-from epochtest.study.claims import Claim
+from epochtest.study.claims import TimingClaim
 
 FindingWord = Literal["excess", "deficit", "none detected", "cannot tell"]
 
@@ -63,6 +63,29 @@ class CatalogResult(Strict):
     notes: tuple[str, ...] = ()
 
 
+class NearbyRow(Strict):
+    """How many line-ups of the family lie within +-half_width_days of an arbitrary instant."""
+
+    half_width_days: float
+    share_of_time: float = Field(description="Share of all instants with at least one.")
+    mean_number: float
+    median_number: int
+    most: int
+
+
+class FamilyRates(Strict):
+    """Base rates of all line-ups that a claim could have chosen from."""
+
+    family: str
+    lineups: int
+    per_year: float
+    nearby: tuple[NearbyRow, ...]
+    reach_days: float = Field(description="The farthest lag of the claim's window.")
+    number_shares: tuple[float, ...] = Field(
+        description="Share of all instants with 0, 1, 2, ... line-ups within +-reach_days."
+    )
+
+
 class EpochResult(Strict):
     """What 2_epochs writes beside epochs.parquet: an event set and its base rates."""
 
@@ -81,6 +104,7 @@ class EpochResult(Strict):
     longest_interval_days: float | None
     coverage: float = Field(description="Share of the span inside the union of all windows.")
     overlapping_windows: int = Field(description="Windows that overlap the one before.")
+    family: FamilyRates | None = Field(None, description="For line-ups: the family it is one of.")
     notes: tuple[str, ...] = ()
 
 
@@ -118,7 +142,7 @@ class TestResult(Strict):
     __test__ = False
 
     schema_version: Literal["epochtest.test/1"] = "epochtest.test/1"
-    claim: Claim
+    claim: TimingClaim
     span_utc: tuple[str, str]
     n_earthquakes: int
     n_epochs: int

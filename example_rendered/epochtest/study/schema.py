@@ -4,24 +4,26 @@ from __future__ import annotations
 
 import json
 from pathlib import Path
+from typing import Any
 
-from pydantic import BaseModel
+from pydantic import TypeAdapter
 
-from epochtest.study.claims import TimingClaim
+from epochtest.study.claims import Claim
 from epochtest.study.results import ClaimResult
 from epochtest.study.settings import Sources, Study
+from epochtest.study.sky_results import ForcingResult, RecurrenceResult
 
-SCHEMAS: dict[str, type[BaseModel]] = {
-    "study.schema.json": Study,
-    "claim.schema.json": TimingClaim,
-    "sources.schema.json": Sources,
-    "result.schema.json": ClaimResult,
+SCHEMAS: dict[str, TypeAdapter[Any]] = {
+    "study.schema.json": TypeAdapter(Study),
+    "claim.schema.json": TypeAdapter(Claim),
+    "sources.schema.json": TypeAdapter(Sources),
+    "result.schema.json": TypeAdapter(ClaimResult | RecurrenceResult | ForcingResult),
 }
 
 
 def schema_text(name: str) -> str:
     """The JSON Schema file ``name`` as text."""
-    schema = SCHEMAS[name].model_json_schema()
+    schema = SCHEMAS[name].json_schema()
     schema["$schema"] = "https://json-schema.org/draft/2020-12/schema"
     return json.dumps(schema, indent=2, ensure_ascii=False) + "\n"
 

@@ -62,6 +62,9 @@ class ColumnMap(Strict):
     magnitude_type: str | None = None
     event_id: str | None = None
     event_type: str | None = None
+    strike: str | None = Field(None, description="Of one nodal plane, degrees (Aki & Richards).")
+    dip: str | None = None
+    rake: str | None = None
 
     @model_validator(mode="after")
     def _one_way_of_telling_time(self) -> ColumnMap:

@@ -12,10 +12,18 @@ from epochtest.tables.inputs import (
     base_rates_table,
     epochs_table,
     files_table,
+    nearby_table,
     provenance_table,
     quarantine_table,
 )
 from epochtest.tables.protocol import decided_before
+from epochtest.tables.sky import (
+    loads_table,
+    occurrences_table,
+    pulls_table,
+    recurrence_numbers,
+    sky_findings_table,
+)
 
 __all__ = [
     "HtmlTable",
@@ -27,8 +35,14 @@ __all__ = [
     "findings_table",
     "findings_text",
     "html",
+    "loads_table",
+    "nearby_table",
     "nulls_table",
+    "occurrences_table",
     "provenance_table",
+    "pulls_table",
     "quarantine_table",
+    "recurrence_numbers",
+    "sky_findings_table",
     "test_table",
 ]

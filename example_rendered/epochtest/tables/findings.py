@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import pandas as pd
 
 from epochtest.study.results import CAUTION, ClaimResult
+from epochtest.study.sky_results import ForcingResult, RecurrenceResult
 from epochtest.tables import numbers
 from epochtest.tables.html import NUMERIC, numeric
 
@@ -87,14 +88,17 @@ def findings_text(results: Sequence[ClaimResult]) -> Table:
     return table
 
 
-def findings_numbers(results: Sequence[ClaimResult]) -> pd.DataFrame:
+def findings_numbers(
+    results: Sequence[ClaimResult], sky_results: Sequence[RecurrenceResult | ForcingResult] = ()
+) -> pd.DataFrame:
     """The findings as plain numbers for other programs: one row per claim, unbounded is blank."""
-    rows = []
+    rows: list[dict[str, object]] = []
     for result in results:
         test, effect = result.test, result.test.effect
         rows.append(
             {
                 "claim": test.claim.id,
+                "kind": test.claim.kind,
                 "finding": result.finding,
                 "p_used": result.family.p_used,
                 "p_maxt": result.family.p_maxt,
@@ -115,4 +119,8 @@ def findings_numbers(results: Sequence[ClaimResult]) -> pd.DataFrame:
                 "expected": test.expected,
             }
         )
+    rows += [
+        {"claim": result.claim.id, "kind": result.claim.kind, "finding": result.finding}
+        for result in sky_results
+    ]
     return pd.DataFrame(rows)

@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 
 import pandas as pd
 
-from epochtest.study.results import CatalogResult, EpochResult
+from epochtest.study.results import CatalogResult, EpochResult, FamilyRates
 from epochtest.tables import numbers
 from epochtest.tables.html import numeric
 
@@ -86,6 +86,24 @@ def epochs_table(epochs: pd.DataFrame) -> pd.DataFrame:
     ]
     columns = ["Instant (UTC)", "Event", "Separation (deg)", "Distance (km)"]
     return numeric(pd.DataFrame(rows, columns=columns, dtype=object), *columns[2:])
+
+
+def nearby_table(rates: FamilyRates) -> pd.DataFrame:
+    """What any instant has near it, whether or not anything happened then."""
+    rows = [
+        (
+            f"{row.half_width_days:g}",
+            numbers.percent(row.share_of_time),
+            numbers.decimal(row.mean_number),
+            numbers.count(row.median_number),
+            numbers.count(row.most),
+        )
+        for row in rates.nearby
+    ]
+    columns = [
+        "Within ± (days)", "Of all instants with at least one", "Mean number", "Median", "Most",
+    ]  # fmt: skip
+    return numeric(pd.DataFrame(rows, columns=columns, dtype=object), *columns[1:])
 
 
 def provenance_table(facts: Mapping[str, object]) -> pd.DataFrame:

@@ -4,21 +4,11 @@ from __future__ import annotations
 
 import pandas as pd
 
-from epochtest.study.claims import (
-    ListedDates,
-    LongitudeDifference,
-    MoonDistance,
-    MoonPhase,
-    SkyEvent,
-    TimingClaim,
-)
+from epochtest.study.claims import ForcingAssertion, Place, Recurrence, TimingClaim
 from epochtest.study.settings import Selection, Study
+from epochtest.study.words import body_in_words, event_in_words, frame_in_words
 from epochtest.tables import numbers
 
-_FRAME = {
-    "geometric-J2000": "geometric directions, J2000 ecliptic",
-    "apparent-of-date": "apparent directions, ecliptic of date",
-}
 _DIRECTION = {
     "more": "more earthquakes inside the windows than outside (one-sided)",
     "fewer": "fewer earthquakes inside the windows than outside (one-sided)",
@@ -33,26 +23,6 @@ _CORRECTION = {
     "holm": "Holm's step-down over all claims of the study",
     "none": "none: each claim is tested as if it were the only one",
 }
-
-
-def event_in_words(event: SkyEvent) -> str:
-    """The sky event of a claim as a phrase with its frame."""
-    match event:
-        case MoonPhase():
-            named = [f"{phase.replace('-', ' ')} Moon" for phase in event.phases]
-            angles = [f"Moon {numbers.days(a)}° east of the Sun" for a in event.elongations_deg]
-            return f"{' or '.join(named + angles)} ({_FRAME[event.frame]})"
-        case MoonDistance():
-            side = "nearest to" if event.extreme == "perigee" else "farthest from"
-            return f"Moon {side} the Earth ({event.extreme})"
-        case LongitudeDifference():
-            first, second = (_body(body) for body in event.bodies)
-            what = event.aspect or " or ".join(f"{numbers.days(a)}°" for a in event.angles_deg())
-            noun = what if event.aspect else f"difference of ecliptic longitude {what}"
-            seen = f"{noun} of {first} and {second} seen from {_body(event.centre)}"
-            return f"{seen} ({_FRAME[event.frame]})"
-        case ListedDates():
-            return f"dates listed in {event.file}, column {event.column}"
 
 
 def selection_in_words(selection: Selection) -> str:
@@ -87,6 +57,35 @@ def _days(value: float) -> str:
     return f"{numbers.days(value)} {'day' if value == 1.0 else 'days'}"
 
 
+def recurrence_in_words(said: Recurrence) -> list[str]:
+    """What a recurrence claim says, one phrase each."""
+    give = f"within {said.tolerance_years:g} years"
+    parts = []
+    if said.every_years is not None:
+        parts.append(f"it happens every {said.every_years:g} years, {give}")
+    if said.last_happened is not None:
+        parts.append(f"before {said.before} it last happened on {said.last_happened}, {give}")
+    if said.not_again_for_years is not None:
+        parts.append(
+            f"after {said.before} it does not happen for {said.not_again_for_years:g} years"
+        )
+    return parts
+
+
+def place_in_words(place: Place) -> str:
+    """A place as latitude and longitude."""
+    latitude = _degrees(place.latitude_deg, "N", "S")
+    return f"{latitude}, {_degrees(place.longitude_deg, 'E', 'W')}"
+
+
+def assertion_in_words(asserts: ForcingAssertion | None) -> str:
+    """What a forcing claim says of one body."""
+    if asserts is None:
+        return "nothing; the tides are measured"
+    share = f"{asserts.at_least_share_of_moon:g} times the Moon's mean pull"
+    return f"{body_in_words(asserts.body)} pulls at least {share}"
+
+
 def decided_before(claim: TimingClaim, study: Study) -> pd.DataFrame:
     """Everything about ``claim`` that was fixed before outcomes were seen, one row each."""
     inference = study.inference
@@ -98,7 +97,7 @@ def decided_before(claim: TimingClaim, study: Study) -> pd.DataFrame:
     rows = [
         ("Claim", claim.statement),
         ("Asserted by", claim.asserted_by or "not said"),
-        ("Sky event", event_in_words(claim.event)),
+        ("Sky event", f"{event_in_words(claim.event)} ({frame_in_words(claim.event)})"),
         ("Ephemeris", study.ephemeris.kernel),
         ("Window", window_in_words(claim.window_days)),
         ("Direction", _DIRECTION[claim.direction]),
@@ -116,10 +115,6 @@ def decided_before(claim: TimingClaim, study: Study) -> pd.DataFrame:
         ),
     ]
     return pd.DataFrame(rows, columns=["What", "Decided beforehand"], dtype=object)
-
-
-def _body(body: str) -> str:
-    return f"the {body.capitalize()}" if body in ("sun", "moon", "earth") else body.capitalize()
 
 
 def _limits(what: str, unit: str, low: float | None, high: float | None) -> str:

@@ -335,3 +335,23 @@ def test_mechanisms_are_whole_or_absent() -> None:
     assert kept.loc["a"].tolist() == [0.0, 30.0, -90.0]
     assert kept.loc[["b", "c", "d"]].isna().all(axis=None)
     assert result.repairs["incomplete or impossible mechanism dropped"] == 2
+
+
+def test_a_catalog_that_does_not_fill_the_span_is_named() -> None:
+    """Monthly earthquakes of 1990-2010 in a span from 1950 to 2011 begin 40 years late.
+
+    The end, eleven months of the usual one between two, is within what a steady rate gives.
+    """
+    rows = [
+        {"event_id": f"e{year}{month:02d}", "time": f"{year}-{month:02d}-05T00:00:00Z"}
+        for year in range(1990, 2010)
+        for month in range(1, 13)
+    ]
+    sources = Sources(source=(Source(file="f.csv", origin="x", licence="x", sha256="0" * 64),))
+    cleaned = clean(raw(*rows), CatalogSettings(files=("f.csv",)))
+    span = np.datetime64("1950-01-01", "us"), np.datetime64("2010-12-01", "us")
+    notes = " ".join(summarise(cleaned, sources, span).notes)
+    assert "begins 14614 days inside" in notes
+    assert "ends" not in notes.split("shorten the span")[0].split("begins")[0]
+    full = np.datetime64("1990-01-01", "us"), span[1]
+    assert "inside the study's span" not in " ".join(summarise(cleaned, sources, full).notes)

@@ -14,14 +14,16 @@ from pathlib import Path
 import pandas as pd
 import pytest
 from epochtest.errors import ProtocolError
+from epochtest.pipeline import superposed_step
 from epochtest.pipeline.catalog_step import catalog_of
 from epochtest.pipeline.check import check_study
+from epochtest.pipeline.epochs_step import epochs_of
 from epochtest.pipeline.forcing_step import forcing_of
 from epochtest.pipeline.recurrence_step import recurrence_of
 from epochtest.pipeline.run import claim_results
 from epochtest.study.load import load_study
 
-from tests.studies import command, small_study, write_sources
+from tests.studies import command, small_study, write_claim, write_sources
 
 RECURRENCE = """
 id = "giants"
@@ -153,6 +155,28 @@ def test_impossible_sky_claims_are_refused_with_the_nearest_spelling(study: Path
     (claims / "tides.toml").write_text(tides, encoding="utf-8")
     with pytest.raises(ProtocolError, match="raises no tide on itself"):
         load_study(study)
+
+
+def test_listed_dates_reach_the_test_and_may_be_none(study: Path) -> None:
+    """A dated list inside the study gives its epochs; an empty list gives none and no crash."""
+    event = 'kind = "listed"\nfile = "claims/dates.csv"'
+    write_claim(study, "listed", event)
+    for text, expected in (
+        ("time\n2001-02-03\n2001-02-03\n1990-01-01\n2005-06-07T08:09Z\n", 2),
+        ("time\n", 0),
+    ):
+        (study / "claims/dates.csv").write_text(text, encoding="utf-8")
+        loaded = load_study(study)
+        claim = loaded.timing_claim("listed")
+        epochs = epochs_of(loaded, claim)
+        assert epochs.result.n_epochs == len(epochs.frame) == expected
+        step = superposed_step.tested(loaded, claim, catalog_of(loaded), epochs)
+        assert step.result.n_epochs == expected
+        assert len(epochs.result.notes) == (2 if expected else 0)
+        for figure in (step.lag_chart(), step.null_chart(), step.timeline(), epochs.intervals()):
+            assert figure.alt
+    assert step.result.hits == 0
+    assert step.result.nulls[0].p == 1.0
 
 
 def test_check_names_what_sky_claims_will_do(study: Path) -> None:

@@ -246,13 +246,16 @@ def test_base_rates_and_nulls_show_what_chance_gives() -> None:
     )
 
 
-def test_the_terminal_table_ends_with_the_caution() -> None:
+@pytest.mark.parametrize("width", [80, 120])
+def test_the_terminal_table_ends_with_the_caution(width: int) -> None:
     """The command line carries the claims by id, the findings and the caution."""
     out = io.StringIO()
-    Console(file=out, width=120).print(tables.findings_text([_result()]))
+    Console(file=out, width=width).print(tables.findings_text([_result()], width))
     text = out.getvalue()
     assert "full-moon" in text
     assert "none detected" in text
+    assert "…" not in text
+    assert ("Hits / expected" in text) is (width >= 110)
     assert " ".join(CAUTION.split()) in " ".join(text.split())
 
 

@@ -131,7 +131,7 @@ def show_findings(study: LoadedStudy) -> None:
 
     console = Console() if sys.stdout.isatty() else Console(width=PLAIN_WIDTH)
     if tested:
-        console.print(findings_text(tested))
+        console.print(findings_text(tested, console.width))
     for result in sky:
         click.echo(f"{result.claim.id} ({result.claim.kind}): {result.sentence}")
     if not tested:

@@ -111,8 +111,9 @@ def epochs_of(study: LoadedStudy, claim: TimingClaim) -> EpochsStep:
     wanted = padded_span(span, claim.window_days)
     notes = []
     if isinstance(claim.event, ListedDates):
-        frame = read_listed(study.root, claim.event, *wanted)
+        frame = read_listed(study.root / claim.event.file, claim.event, *wanted)
         ephemeris_name, family = "none", None
+        notes += _notes_on_list(frame)
         searched = wanted
     else:
         ephemeris = open_ephemeris(study.settings.ephemeris.kernel)
@@ -139,6 +140,15 @@ def epochs_of(study: LoadedStudy, claim: TimingClaim) -> EpochsStep:
         notes=tuple(notes),
     )
     return EpochsStep(study.root, claim, frame, result.model_copy(update={"family": family}))
+
+
+def _notes_on_list(frame: pd.DataFrame) -> list[str]:
+    """What was left out of a user's own list."""
+    left_out = {
+        "listed twice and counted once": frame.attrs["duplicates_dropped"],
+        "listed outside the reach of the span and left out": frame.attrs["outside_span"],
+    }
+    return [f"{count} dates were {what}." for what, count in left_out.items() if count]
 
 
 def family_rates(claim: TimingClaim, ephemeris: Ephemeris, span: Interval) -> FamilyRates | None:

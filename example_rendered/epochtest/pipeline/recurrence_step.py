@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from epochtest import charts, tables
-from epochtest.pipeline.block import Block, Shown, heading, paragraph, quotation, stacked
+from epochtest.pipeline.block import Block, opening, paragraph, stacked
 from epochtest.pipeline.frames import artifact_folder, output_folder, read_result, result_text
 from epochtest.pipeline.recurrence_result import (
     assertions_of,
@@ -114,14 +114,8 @@ class RecurrenceStep:
 
     def section(self) -> Block:
         """The claim's part of the report."""
-        claim = self.claim
-        pieces: list[Shown] = [
-            heading(3, claim.title, f"claim-{claim.id}"),
-            quotation(claim.statement),
-        ]
-        if claim.asserted_by:
-            pieces.append(paragraph(f"Asserted by: {claim.asserted_by}"))
-        pieces += [
+        return stacked(
+            opening(self.claim),
             self.decision(),
             self.chart(),
             self.intervals_chart(),
@@ -129,8 +123,7 @@ class RecurrenceStep:
             self.explanation(),
             self.counter_examples(),
             self.extrapolation(),
-        ]
-        return stacked(*pieces)
+        )
 
     def save(self, output: str) -> str:
         """Write occurrences.parquet and result.json into ``output``; says what was done."""

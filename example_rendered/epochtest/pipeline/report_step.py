@@ -20,7 +20,7 @@ from epochtest.inference.finding import decide, sentence
 from epochtest.inference.multiplicity import adjust_family
 from epochtest.inference.superposed import with_family
 from epochtest.pipeline import catalog_step, epochs_step, forcing_step, recurrence_step
-from epochtest.pipeline.block import Block, Shown, heading, link, paragraph, quotation, stacked
+from epochtest.pipeline.block import Block, Shown, heading, link, opening, paragraph, stacked
 from epochtest.pipeline.catalog_step import CatalogStep
 from epochtest.pipeline.forcing_step import ForcingStep
 from epochtest.pipeline.frames import artifact_folder, output_folder, result_text
@@ -136,23 +136,16 @@ class ReportStep:
         )
 
     def _claim(self, test: SuperposedStep, result: ClaimResult) -> Block:
-        claim = test.claim
-        pieces: list[Shown] = [
-            heading(3, claim.title, f"claim-{claim.id}"),
-            quotation(claim.statement),
-        ]
-        if claim.asserted_by:
-            pieces.append(paragraph(f"Asserted by: {claim.asserted_by}"))
-        pieces.append(paragraph(result.sentence, "decision"))
-        pieces += [
+        return stacked(
+            opening(test.claim),
+            paragraph(result.sentence, "decision"),
             test.notes(),
             test.decided_before(),
             test.lag_chart(),
             test.null_chart(),
             test.timeline(),
             tables.html(tables.test_table(result.test, result.family), "The test in numbers"),
-        ]
-        return stacked(*pieces)
+        )
 
     def nulls(self) -> tables.HtmlTable:
         """The nulls side by side."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from epochtest.catalog.clean import NEAR_DUPLICATE, OTHER_TYPE, REASONS, REUSED_ID, Cleaned
 from epochtest.catalog.completeness import bin_width, size_distribution
@@ -11,6 +12,10 @@ from epochtest.catalog.select import in_span
 from epochtest.study.results import CatalogResult, FileCount, SizeDistribution
 from epochtest.study.settings import Sources
 
+FEW_FOR_SPAN = 10
+"""Events below which nothing is said of whether the catalog fills the span."""
+SPAN_GAP_MEANS = 20
+"""A gap at an end of the span, in mean intervals, that a steady rate gives once in e^20."""
 FEW_FOR_B = 50
 """Events above completeness below which b is called uncertain (common practice)."""
 
@@ -41,7 +46,7 @@ def summarise(
         largest_magnitude=float(kept["magnitude"].max()) if len(kept) else None,
         magnitude_types=_counts(kept["magnitude_type"]),
         sizes=sizes,
-        notes=tuple(_notes(cleaned, sizes, int(inside.sum()))),
+        notes=tuple(_notes(cleaned, sizes, int(inside.sum()), span)),
     )
 
 
@@ -79,13 +84,19 @@ def _file_counts(cleaned: Cleaned, sources: Sources) -> tuple[FileCount, ...]:
     )
 
 
-def _notes(cleaned: Cleaned, sizes: SizeDistribution, in_span_count: int) -> list[str]:
+def _notes(
+    cleaned: Cleaned,
+    sizes: SizeDistribution,
+    in_span_count: int,
+    span: tuple[np.datetime64, np.datetime64],
+) -> list[str]:
     kept, aside = cleaned.kept, cleaned.quarantined
     notes = []
     if len(kept) == 0:
         notes.append("No row was kept; read the reasons, and mend the file or study.toml.")
     elif in_span_count == 0:
         notes.append("No kept earthquake lies in the study's span; mend the span or the catalog.")
+    notes.extend(_notes_on_span(kept["time_utc"].to_numpy(), span))
     if day_only := int(kept["day_only"].sum()):
         notes.append(
             f"{day_only} kept rows give a day without a time; they stand at 12:00 UTC, up to half "
@@ -106,6 +117,24 @@ def _notes(cleaned: Cleaned, sizes: SizeDistribution, in_span_count: int) -> lis
     notes.extend(_notes_on_quarantine(aside))
     notes.extend(_notes_on_sizes(sizes))
     return notes
+
+
+def _notes_on_span(
+    times_utc: NDArray[np.datetime64], span: tuple[np.datetime64, np.datetime64]
+) -> list[str]:
+    """A catalog that does not fill the span: expected counts and shifts would then be wrong."""
+    inside = times_utc[(times_utc >= span[0]) & (times_utc < span[1])]
+    if inside.size < FEW_FOR_SPAN:
+        return []
+    mean = (inside[-1] - inside[0]) / (inside.size - 1)
+    gaps = {"begins": inside[0] - span[0], "ends": span[1] - inside[-1]}
+    return [
+        f"The catalog {word} {gap / np.timedelta64(1, 'D'):.0f} days inside the study's span, "
+        f"{gap / mean:.0f} times its mean interval: expected counts and the shift null assume "
+        "that it fills the span; shorten the span or complete the catalog."
+        for word, gap in gaps.items()
+        if gap > SPAN_GAP_MEANS * mean
+    ]
 
 
 def _notes_on_quarantine(aside: pd.DataFrame) -> list[str]:

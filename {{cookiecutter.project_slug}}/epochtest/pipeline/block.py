@@ -6,6 +6,8 @@ from dataclasses import dataclass
 from html import escape
 from typing import Protocol
 
+from epochtest.study.claims import Asserted
+
 
 class Shown(Protocol):
     """Anything that can put itself on a page."""
@@ -47,6 +49,14 @@ def paragraph(text: str, look: str = "") -> Block:
 def quotation(text: str) -> Block:
     """Somebody's words."""
     return Block(f"<blockquote><p>{escape(text)}</p></blockquote>", text)
+
+
+def opening(claim: Asserted) -> Block:
+    """The head of a claim's section: title with its anchor, statement, who asserts it."""
+    pieces = [heading(3, claim.title, f"claim-{claim.id}"), quotation(claim.statement)]
+    if claim.asserted_by:
+        pieces.append(paragraph(f"Asserted by: {claim.asserted_by}"))
+    return stacked(*pieces)
 
 
 def stacked(*pieces: Shown) -> Block:

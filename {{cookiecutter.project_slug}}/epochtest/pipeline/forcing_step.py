@@ -12,7 +12,7 @@ import pandas as pd
 from epochtest import charts, tables
 from epochtest.inference.windows import span_instants
 from epochtest.pipeline import catalog_step
-from epochtest.pipeline.block import Block, Shown, heading, paragraph, quotation, stacked
+from epochtest.pipeline.block import Block, opening, paragraph, stacked
 from epochtest.pipeline.catalog_step import CatalogStep
 from epochtest.pipeline.frames import artifact_folder, output_folder, read_result, result_text
 from epochtest.pipeline.store import RESULT
@@ -129,14 +129,8 @@ class ForcingStep:
 
     def section(self) -> Block:
         """The claim's part of the report."""
-        claim = self.claim
-        pieces: list[Shown] = [
-            heading(3, claim.title, f"claim-{claim.id}"),
-            quotation(claim.statement),
-        ]
-        if claim.asserted_by:
-            pieces.append(paragraph(f"Asserted by: {claim.asserted_by}"))
-        pieces += [
+        return stacked(
+            opening(self.claim),
             self.decision(),
             self.chart(),
             self.pulls(),
@@ -145,8 +139,7 @@ class ForcingStep:
             self.phases_chart(),
             self.series_chart(),
             self.left_out(),
-        ]
-        return stacked(*pieces)
+        )
 
     def save(self, output: str) -> str:
         """Write phases.parquet and result.json into ``output``; says what was done."""

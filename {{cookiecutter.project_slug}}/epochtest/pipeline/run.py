@@ -67,7 +67,7 @@ def make(step: Step, root: Path) -> EpochtestError | None:
         kept = store.keep_failed(step.slot)
         where = f" Kept as {kept.relative_to(root).as_posix()}." if kept else ""
         trace = f"\n{error.facts['trace']}" if error.facts.get("trace") else ""
-        return NotebookError(f"{error.message}.{where}{trace}", **error.facts)
+        return NotebookError(f"{error.message.rstrip('.')}.{where}{trace}", **error.facts)
     except EpochtestError as error:
         return error
     except OSError as error:

@@ -22,6 +22,9 @@ _FINDINGS = (
 _TERMINAL = (
     "Finding", "p", "Rate ratio", "Inflated interval", "Detectable", "Hits / expected",
 )  # fmt: skip
+_NARROW_TERMINAL = ("Finding", "p", "Rate ratio", "Detectable")
+WIDE_TERMINAL = 110
+"""Columns of a terminal from which every number fits beside a claim's id."""
 _NULLS = (
     "Claim", "Null", "Shifts", "Effective shifts", "Hits", "Mean", "SD", "Inflation", "p",
 )  # fmt: skip
@@ -72,18 +75,19 @@ def nulls_table(results: Sequence[ClaimResult]) -> pd.DataFrame:
     return numeric(pd.DataFrame(rows, columns=list(_NULLS), dtype=object), *_NULLS[2:])
 
 
-def findings_text(results: Sequence[ClaimResult]) -> Table:
-    """The findings for a terminal: the columns that fit, and the caution below them."""
+def findings_text(results: Sequence[ClaimResult], width: int) -> Table:
+    """The findings for a terminal of ``width`` columns, and the caution below them."""
     from rich.table import Table
     from rich.text import Text
 
     table = Table(caption=CAUTION, caption_justify="left")
     frame = findings_table(results)
     table.add_column("Claim", overflow="fold")
-    for name in _TERMINAL:
+    shown = _TERMINAL if width >= WIDE_TERMINAL else _NARROW_TERMINAL
+    for name in shown:
         right = name in frame.attrs[NUMERIC]
         table.add_column(name, justify="right" if right else "left", no_wrap=True)
-    for result, row in zip(results, frame[list(_TERMINAL)].itertuples(index=False), strict=True):
+    for result, row in zip(results, frame[list(shown)].itertuples(index=False), strict=True):
         table.add_row(Text(result.test.claim.id), *(Text(cell) for cell in row))
     return table
 

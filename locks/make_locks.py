@@ -49,6 +49,9 @@ def study_dependencies() -> tuple[list[str], list[str]]:
 def compile_lock(uv: str, wanted: list[str], pins: Path | None, lock: Path) -> None:
     """Resolve ``wanted`` for all platforms and write the hashed ``lock``."""
     command = [uv, "pip", "compile", "-", "--universal", "--python-version", "3.11"]
+    # One version for every Python: artifacts are keyed by versions, and a reviewer's Python must
+    # not change the numbers.
+    command += ["--fork-strategy", "fewest"]
     command += ["--generate-hashes", "--no-annotate", "--no-header", "--no-emit-index-url"]
     command += ["--output-file", str(lock), "--quiet"]
     if pins is not None:

@@ -76,6 +76,7 @@ def test_run_leaves_results_report_and_caution(executed: Path) -> None:
         assert result.caution == CAUTION
         assert result.test.n_earthquakes == 400
         assert 0.0 < result.test.nulls[0].p <= result.family.p_maxt <= 1.0
+    assert not (executed / "runs" / "partial").exists()
     page = (executed / "runs" / "report.html").read_text(encoding="utf-8")
     assert CAUTION.split(".")[0] in page
     assert {p.name.rsplit(".", 1)[0] for p in (executed / "runs/artifacts").iterdir()} == ALL_STEPS

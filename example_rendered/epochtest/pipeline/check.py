@@ -7,7 +7,9 @@ windows is an outcome and is not computed here.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
+from typing import TypeVar
 
 from epochtest.errors import EpochtestError
 from epochtest.inference.windows import span_instants
@@ -28,6 +30,8 @@ from epochtest.tables.protocol import (
     selection_in_words,
     window_in_words,
 )
+
+Found = TypeVar("Found")
 
 
 @dataclass
@@ -68,7 +72,7 @@ def check_study(study: LoadedStudy) -> CheckReport:
     return report
 
 
-def _guarded(report: CheckReport, work):  # type: ignore[no-untyped-def]
+def _guarded(report: CheckReport, work: Callable[[], Found]) -> Found | None:
     """The result of ``work``, or None with its fault noted."""
     try:
         return work()

@@ -22,7 +22,7 @@ from pydantic import Field, TypeAdapter
 from epochtest.errors import EpochtestError, NotebookError
 from epochtest.pipeline.parameters import checked
 from epochtest.pipeline.plan import REPORT, Plan, Step
-from epochtest.pipeline.store import NOTEBOOK, Store
+from epochtest.pipeline.store import NOTEBOOK, Slot, Store
 from epochtest.study.claims import Claim
 from epochtest.study.load import LoadedStudy
 from epochtest.study.results import ClaimResult
@@ -100,6 +100,7 @@ def run(
     with store.lock():
         store.clear_partial()
         outcome = _work_through(steps, store, workers or os.cpu_count() or 1, listen)
+        store.clear_partial()
         done = [step.slot for step in steps if step.name in outcome.made + outcome.skipped]
         store.write_current(_with_known(store, plan, done))
         if plan.report.name in outcome.made + outcome.skipped:
@@ -109,7 +110,8 @@ def run(
     return outcome
 
 
-def _with_known(store: Store, plan: Plan, done: list) -> list:  # type: ignore[type-arg]
+def _with_known(store: Store, plan: Plan, done: list[Slot]) -> list[Slot]:
+    """The artifacts of this run and those of other steps that still hold."""
     names = {slot.step for slot in done}
     others = [s.slot for s in plan.steps() if s.name not in names and store.is_made(s.slot)]
     return done + others

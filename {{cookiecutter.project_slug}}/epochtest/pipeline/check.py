@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from functools import partial
 from typing import TypeVar
 
 from epochtest.errors import EpochtestError
@@ -57,7 +58,7 @@ def check_study(study: LoadedStudy) -> CheckReport:
         if not path.is_file():
             report.faults.append(f"notebooks/{path.name}: the notebook is missing; restore it.")
         else:
-            _guarded(report, lambda path=path: declared_names(path))
+            _guarded(report, partial(declared_names, path))
     catalog = _guarded(report, lambda: catalog_of(study))
     if isinstance(catalog, CatalogStep):
         _describe_catalog(report, catalog)

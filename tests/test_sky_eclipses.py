@@ -30,12 +30,6 @@ def utc(text: str) -> np.datetime64:
 
 
 @pytest.fixture(scope="module")
-def de440() -> Ephemeris:
-    """The long kernel."""
-    return open_ephemeris("DE440")
-
-
-@pytest.fixture(scope="module")
 def solar(de440: Ephemeris) -> pd.DataFrame:
     """Solar eclipses 1900-2050."""
     return find_eclipses(de440, "solar", utc("1900-01-01"), utc("2050-01-01"))

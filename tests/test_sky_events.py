@@ -28,18 +28,6 @@ def utc(text: str) -> np.datetime64:
     return np.datetime64(text, "us")
 
 
-@pytest.fixture(scope="module")
-def de440() -> Ephemeris:
-    """The long kernel."""
-    return open_ephemeris("DE440")
-
-
-@pytest.fixture(scope="module")
-def de421() -> Ephemeris:
-    """The default kernel."""
-    return open_ephemeris("DE421")
-
-
 def pair(centre: str, first: str, second: str, **keys: Any) -> LongitudeDifference:
     """A conjunction unless the keys say otherwise."""
     keys = keys if "angle_deg" in keys else {"aspect": "conjunction", **keys}

@@ -40,12 +40,6 @@ def utc(text: str) -> np.datetime64:
     return np.datetime64(text, "us")
 
 
-@pytest.fixture(scope="module")
-def de440() -> Ephemeris:
-    """The long kernel."""
-    return open_ephemeris("DE440")
-
-
 def plain_arc(longitudes_deg: Values, turn: float) -> Values:
     """The smallest arc by its definition: start at each body, go forward to the farthest."""
     ahead = (longitudes_deg[None] - longitudes_deg[:, None]) % turn

@@ -14,7 +14,7 @@ from epochtest.sky.directions import (
     geometric_vectors,
     longitude_difference_deg,
 )
-from epochtest.sky.ephemeris import Ephemeris, open_ephemeris
+from epochtest.sky.ephemeris import Ephemeris
 from epochtest.sky.groupings import find_groupings
 from epochtest.sky.mean_elements import ELEMENTS, MeanElements, mean_longitude_deg
 from epochtest.sky.mean_motion import (
@@ -38,12 +38,6 @@ from hypothesis import strategies as st
 PLANETS: Any = (
     "mercury", "venus", "earth", "mars", "jupiter", "saturn", "uranus", "neptune",
 )  # fmt: skip
-
-
-@pytest.fixture(scope="module")
-def de440() -> Ephemeris:
-    """The long kernel."""
-    return open_ephemeris("DE440")
 
 
 # METHODS A: 36525 * 360 / |difference of the rates of Standish & Williams|, days.

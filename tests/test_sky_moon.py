@@ -51,12 +51,6 @@ def springs(ephemeris: Ephemeris, first: Any, last: Any, **keys: Any) -> pd.Data
 
 
 @pytest.fixture(scope="module")
-def de440() -> Ephemeris:
-    """The long kernel."""
-    return open_ephemeris("DE440")
-
-
-@pytest.fixture(scope="module")
 def nodes(de440: Ephemeris) -> pd.DataFrame:
     """Node passages 1900-2050."""
     return find_node_passages(de440, FIRST, LAST)

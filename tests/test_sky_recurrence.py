@@ -19,7 +19,7 @@ from epochtest.sky.assertions import (
     needed_span,
     overall,
 )
-from epochtest.sky.ephemeris import Ephemeris, open_ephemeris
+from epochtest.sky.ephemeris import Ephemeris
 from epochtest.sky.explanation import explain
 from epochtest.sky.extrapolation import matched_occurrences
 from epochtest.sky.occurrences import (
@@ -44,18 +44,6 @@ GREAT = Pair("sun", ("jupiter", "saturn"))
 def utc(text: str) -> np.datetime64:
     """One instant."""
     return np.datetime64(text, "us")
-
-
-@pytest.fixture(scope="module")
-def de440() -> Ephemeris:
-    """The long kernel."""
-    return open_ephemeris("DE440")
-
-
-@pytest.fixture(scope="module")
-def de421() -> Ephemeris:
-    """The short kernel."""
-    return open_ephemeris("DE421")
 
 
 def day(text: str) -> float:

@@ -59,12 +59,6 @@ def tt_text(tdb_days: float) -> str:
     return str(np.datetime64("2000-01-01T12:00:00") + np.timedelta64(int(seconds), "s"))
 
 
-@pytest.fixture(scope="module")
-def de440() -> Ephemeris:
-    """The long kernel."""
-    return open_ephemeris("DE440")
-
-
 def test_solstice_of_the_handbook(de440: Ephemeris) -> None:
     """June solstice 1962: 21:24:39 TD by DE440 through Skyfield; Meeus (1998), example 27.a.
 

@@ -17,7 +17,7 @@ from epochtest.inference.windows import span_instants
 from epochtest.pipeline.catalog_step import CatalogStep, catalog_of
 from epochtest.pipeline.epochs_step import epochs_of
 from epochtest.pipeline.parameters import PARAMETERS, declared_names
-from epochtest.pipeline.superposed_step import selected_earthquakes
+from epochtest.pipeline.superposed_step import floor_below_completeness, selected_earthquakes
 from epochtest.sky.ephemeris import open_ephemeris
 from epochtest.sky.events import search_span
 from epochtest.study.claims import ForcingClaim, RecurrenceClaim, TimingClaim
@@ -122,12 +122,8 @@ def _describe_timing(
         )
     if catalog is None:
         return
-    mc, floor = catalog.result.sizes.mc, study.selection_of(claim).minimum_magnitude
-    if mc is not None and (floor is None or floor < mc):
-        report.warnings.append(
-            f"{claim.id}: its magnitude floor ({'none' if floor is None else f'{floor:g}'}) is "
-            f"below the completeness of the catalog (about {mc:.2f})."
-        )
+    if (incomplete := floor_below_completeness(study, claim, catalog)) is not None:
+        report.warnings.append(f"{claim.id}: its {incomplete}.")
 
 
 def _describe_selection(

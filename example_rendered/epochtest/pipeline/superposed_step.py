@@ -100,6 +100,17 @@ def selected_earthquakes(
     return kept[chosen]
 
 
+def floor_below_completeness(
+    study: LoadedStudy, claim: TimingClaim, catalog: CatalogStep
+) -> str | None:
+    """A clause with floor and completeness if the claim counts where earthquakes are missed."""
+    floor, mc = study.selection_of(claim).minimum_magnitude, catalog.result.sizes.mc
+    if mc is None or (floor is not None and floor >= mc):
+        return None
+    shown = "none" if floor is None else f"{floor:g}"
+    return f"magnitude floor ({shown}) is below the completeness of the catalog (about {mc:.2f})"
+
+
 def tested(
     study: LoadedStudy, claim: TimingClaim, catalog: CatalogStep, epochs: EpochsStep
 ) -> SuperposedStep:
@@ -121,12 +132,10 @@ def _catalog_warnings(
     study: LoadedStudy, claim: TimingClaim, catalog: CatalogStep, selected: pd.DataFrame
 ) -> list[str]:
     found = []
-    floor, mc = study.selection_of(claim).minimum_magnitude, catalog.result.sizes.mc
-    if mc is not None and (floor is None or floor < mc):
+    if (incomplete := floor_below_completeness(study, claim, catalog)) is not None:
         found.append(
-            f"The magnitude floor ({'none' if floor is None else f'{floor:g}'}) is below the "
-            f"completeness of the catalog (about {mc:.2f}): the rate depends on what was "
-            "detected, which can follow season, hour and network rather than the Earth."
+            f"The {incomplete}: the rate depends on what was detected, which can follow season, "
+            "hour and network rather than the Earth."
         )
     day_only = int(selected["day_only"].sum())
     if day_only:

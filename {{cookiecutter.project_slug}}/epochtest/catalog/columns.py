@@ -9,12 +9,6 @@ from epochtest.errors import CatalogError
 from epochtest.study.base import nearest
 from epochtest.study.settings import ColumnMap
 
-FDSN_HEADER = (
-    "EventID", "Time", "Latitude", "Longitude", "Depth/km", "Author", "Catalog", "Contributor",
-    "ContributorID", "MagType", "Magnitude", "MagAuthor", "EventLocationName", "EventType",
-)  # fmt: skip
-"""Columns of event text (FDSN Web Service Specifications 1.2; EventType may be absent)."""
-
 USUAL_NAMES: dict[str, tuple[str, ...]] = {
     "time": (
         "time", "time_utc", "utc_time", "utc", "datetime", "date_time", "datetime_utc",
